@@ -3,6 +3,8 @@
 #include <fmt/format.h>
 #include <hdf5.h>
 #include <libdeflate.h>
+#include <sys/mman.h>
+#include <unistd.h>
 
 #include <algorithm>
 #include <array>
@@ -29,22 +31,48 @@ static_assert(std::endian::native == std::endian::little,
 // build of it; what costs time (filtering chunks) is done outside.
 std::mutex library_mutex;
 
-/// Ends the library's habit of printing every failure; the setting is per thread.
-class Quiet {
+/// The time during which the library is called: holds its lock, and keeps the library's account of the first
+/// failure instead of letting it be printed. It is taken down when it happens, for the next call (even one
+/// that releases something on the way out) would clear it.
+class LibraryCall {
  public:
-  Quiet() : lock_(library_mutex) {
+  LibraryCall() : lock_(library_mutex) {
     H5Eget_auto2(H5E_DEFAULT, &printer_, &printer_data_);
-    H5Eset_auto2(H5E_DEFAULT, nullptr, nullptr);
+    H5Eset_auto2(H5E_DEFAULT, take_down, this);
   }
-  ~Quiet() { H5Eset_auto2(H5E_DEFAULT, printer_, printer_data_); }
-  Quiet(const Quiet&) = delete;
-  Quiet& operator=(const Quiet&) = delete;
+  ~LibraryCall() { H5Eset_auto2(H5E_DEFAULT, printer_, printer_data_); }
+  LibraryCall(const LibraryCall&) = delete;
+  LibraryCall& operator=(const LibraryCall&) = delete;
+
+  tl::unexpected<Error> failure(std::string_view what, const std::string& subject) const;
 
  private:
+  static herr_t take_down(hid_t stack, void* self) {
+    std::string& account = static_cast<LibraryCall*>(self)->account_;
+    if (account.empty()) H5Ewalk2(stack, H5E_WALK_UPWARD, add_description, &account);
+    return 0;
+  }
+  static herr_t add_description(unsigned, const H5E_error2_t* entry, void* account) {
+    if (entry->desc != nullptr) *static_cast<std::string*>(account) += std::string(entry->desc) + "; ";
+    return 0;
+  }
+
   std::lock_guard<std::mutex> lock_;
   H5E_auto2_t printer_ = nullptr;
   void* printer_data_ = nullptr;
+  std::string account_;
 };
+
+/// The system's errno stands only in the text of the account, as "errno = 28".
+tl::unexpected<Error> LibraryCall::failure(std::string_view what, const std::string& subject) const {
+  constexpr std::string_view key = "errno = ";
+  if (const auto at = account_.find(key); at != std::string::npos) {
+    const int number = std::atoi(account_.c_str() + at + key.size());
+    if (number != 0) return system_failure(number, what, subject);
+  }
+  const std::string_view reason = account_.empty() ? "HDF5 gives no reason" : std::string_view(account_);
+  return bentlight::failure(ErrorCode::io_error, fmt::format("{}: {}", what, reason), subject);
+}
 
 /// An identifier of the library, released at the end of its life. Needs the lock held both times.
 class Handle {
@@ -68,26 +96,6 @@ class Handle {
  private:
   hid_t id_ = H5I_INVALID_HID;
 };
-
-herr_t collect_description(unsigned, const H5E_error2_t* entry, void* text) {
-  if (entry->desc != nullptr) *static_cast<std::string*>(text) += std::string(entry->desc) + "; ";
-  return 0;
-}
-
-/// The failure on top of the library's error stack. The system's errno stands only in the text of the stack's
-/// entries, as "errno = 28".
-tl::unexpected<Error> library_failure(std::string_view what, const std::string& subject) {
-  std::string stack;
-  H5Ewalk2(H5E_DEFAULT, H5E_WALK_UPWARD, collect_description, &stack);
-  H5Eclear2(H5E_DEFAULT);
-  constexpr std::string_view key = "errno = ";
-  if (const auto at = stack.find(key); at != std::string::npos) {
-    const int number = std::atoi(stack.c_str() + at + key.size());
-    if (number != 0) return system_failure(number, what, subject);
-  }
-  return failure(ErrorCode::io_error,
-                 fmt::format("{}: {}", what, stack.empty() ? "HDF5 gives no reason" : stack), subject);
-}
 
 template <class Element>
 hid_t element_type();
@@ -271,6 +279,21 @@ bool advance(std::vector<std::uint64_t>& place,
   return false;
 }
 
+/// Lets a file that will not be completed go. After a failed write (a full disk) the library would keep it
+/// open and try again, at the latest when the program ends; so whatever it still wants to write goes into a
+/// nameless file.
+void abandon(Handle& file) {
+  int* descriptor = nullptr;
+  if (H5Fget_vfd_handle(file.id(), H5P_DEFAULT, reinterpret_cast<void**>(&descriptor)) >= 0) {
+    const int nowhere = ::memfd_create("abandoned", MFD_CLOEXEC);
+    if (nowhere >= 0) {
+      ::dup2(nowhere, *descriptor);
+      ::close(nowhere);
+    }
+  }
+  file.release();
+}
+
 /// A dataset between begin() and close().
 struct OpenDataset {
   Handle handle;
@@ -312,9 +335,14 @@ struct Hdf5Writer::State {
   std::vector<std::byte> chunk;  // scratch
 
   ~State() {
-    const Quiet quiet;
+    const LibraryCall call;
     open.clear();
-    file.release();
+    if (!file.valid()) return;
+    if (in_memory) {
+      file.release();
+    } else {
+      abandon(file);
+    }
   }
 
   Expected<void> create_dataset(const std::string& path, OpenDataset dataset);
@@ -339,7 +367,7 @@ Expected<void> Hdf5Writer::State::create_dataset(const std::string& path, OpenDa
   if (!step.empty() && !dataset.storage.fletcher32)
     dataset.filter.emplace(dataset.storage, dataset.element_bytes);
 
-  const Quiet quiet;
+  const LibraryCall call;
   const std::vector<hsize_t> extents(dataset.shape.begin(), dataset.shape.end());
   const Handle space(extents.empty()
                          ? H5Screate(H5S_SCALAR)
@@ -349,7 +377,7 @@ Expected<void> Hdf5Writer::State::create_dataset(const std::string& path, OpenDa
   const Handle creation = creation_list(dataset.storage);
   dataset.handle = Handle(
       H5Dcreate2(file.id(), path.c_str(), dataset.type, space.id(), links.id(), creation.id(), H5P_DEFAULT));
-  if (!dataset.handle.valid()) return library_failure("creating the dataset " + path, subject);
+  if (!dataset.handle.valid()) return call.failure("creating the dataset " + path, subject);
   open.insert_or_assign(path, std::move(dataset));
   return {};
 }
@@ -369,10 +397,10 @@ Expected<void> Hdf5Writer::State::write_chunks(OpenDataset& dataset,
     const ChunkFilter::Stored stored = dataset.filter->stored(chunk);
     std::vector<hsize_t> offset(place.begin(), place.end());
     offset[0] += first;
-    const Quiet quiet;
+    const LibraryCall call;
     if (H5Dwrite_chunk(dataset.handle.id(), H5P_DEFAULT, stored.skipped_filters, offset.data(),
                        stored.bytes.size(), stored.bytes.data()) < 0) {
-      return library_failure("writing a chunk", subject);
+      return call.failure("writing a chunk", subject);
     }
   } while (advance(place, shape, step));
   return {};
@@ -391,9 +419,8 @@ Expected<void> Hdf5Writer::State::append(const std::string& path,
     throw std::invalid_argument("Hdf5Writer: what is appended does not fit into " + path);
   }
   if (dataset.takes_whole_chunks(first, count)) return write_chunks(dataset, first, count, data);
-  const Quiet quiet;
-  if (!write_by_library(dataset, first, count, data.data()))
-    return library_failure("writing " + path, subject);
+  const LibraryCall call;
+  if (!write_by_library(dataset, first, count, data.data())) return call.failure("writing " + path, subject);
   return {};
 }
 
@@ -414,10 +441,10 @@ Handle file_creation_list() {
 Expected<Hdf5Writer> Hdf5Writer::create(const std::filesystem::path& path) {
   auto state = std::make_unique<State>();
   state->subject = path.string();
-  const Quiet quiet;
+  const LibraryCall call;
   const Handle access(H5Pcreate(H5P_FILE_ACCESS));
   state->file = Handle(H5Fcreate(path.c_str(), H5F_ACC_TRUNC, file_creation_list().id(), access.id()));
-  if (!state->file.valid()) return library_failure("creating the file", path.string());
+  if (!state->file.valid()) return call.failure("creating the file", path.string());
   return Hdf5Writer(std::move(state));
 }
 
@@ -428,22 +455,22 @@ Expected<Hdf5Writer> Hdf5Writer::in_memory() {
   auto state = std::make_unique<State>();
   state->subject = fmt::format("in-memory-{}.h5", number++);
   state->in_memory = true;
-  const Quiet quiet;
+  const LibraryCall call;
   const Handle access(H5Pcreate(H5P_FILE_ACCESS));
   H5Pset_fapl_core(access.id(), growth_bytes, /*backing_store=*/false);
   state->file =
       Handle(H5Fcreate(state->subject.c_str(), H5F_ACC_TRUNC, file_creation_list().id(), access.id()));
-  if (!state->file.valid()) return library_failure("creating a file in memory", state->subject);
+  if (!state->file.valid()) return call.failure("creating a file in memory", state->subject);
   return Hdf5Writer(std::move(state));
 }
 
 Expected<void> Hdf5Writer::attribute(const std::string& object,
                                      const std::string& name,
                                      const AttributeValue& value) {
-  const Quiet quiet;
+  const LibraryCall call;
   const Handle target(H5Oopen(state_->file.id(), object.c_str(), H5P_DEFAULT));
   if (!target.valid() || !write_attribute(target.id(), name.c_str(), value)) {
-    return library_failure("writing the attribute " + name + " of " + object, state_->subject);
+    return call.failure("writing the attribute " + name + " of " + object, state_->subject);
   }
   return {};
 }
@@ -475,20 +502,20 @@ Expected<void> Hdf5Writer::dataset(const std::string& path,
   if (data.size() != product(shape))
     throw std::invalid_argument("Hdf5Writer: shape and data differ for " + path);
   if (auto begun = begin<Element>(path, shape, {}); !begun) return begun;
-  const Quiet quiet;
+  const LibraryCall call;
   const OpenDataset& created = state_->open.at(path);
   const bool empty = data.empty();
   if (!empty && H5Dwrite(created.handle.id(), created.type, H5S_ALL, H5S_ALL, H5P_DEFAULT, data.data()) < 0) {
-    return library_failure("writing " + path, state_->subject);
+    return call.failure("writing " + path, state_->subject);
   }
   state_->open.erase(path);
   return {};
 }
 
 Expected<void> Hdf5Writer::axes(const std::string& path, std::span<const std::string> axes) {
-  const Quiet quiet;
+  const LibraryCall call;
   const hid_t file = state_->file.id();
-  const auto failed = [&] { return library_failure("naming the axes of " + path, state_->subject); };
+  const auto failed = [&] { return call.failure("naming the axes of " + path, state_->subject); };
   const Handle dataset(H5Dopen2(file, path.c_str(), H5P_DEFAULT));
   ScaleUse use{};
   if (!dataset.valid() || H5Rcreate(&use.dataset, file, path.c_str(), H5R_OBJECT, -1) < 0) return failed();
@@ -513,19 +540,19 @@ Expected<void> Hdf5Writer::axes(const std::string& path, std::span<const std::st
 }
 
 Expected<void> Hdf5Writer::close() {
-  const Quiet quiet;
+  const LibraryCall call;
   state_->open.clear();
   if (H5Fflush(state_->file.id(), H5F_SCOPE_LOCAL) < 0)
-    return library_failure("writing the file", state_->subject);
-  if (!state_->file.release()) return library_failure("closing the file", state_->subject);
+    return call.failure("writing the file", state_->subject);
+  if (!state_->file.release()) return call.failure("closing the file", state_->subject);
   return {};
 }
 
 Expected<std::vector<std::byte>> Hdf5Writer::image() {
   if (!state_->in_memory) throw std::invalid_argument("Hdf5Writer: image() of a file that is not in memory");
-  const Quiet quiet;
+  const LibraryCall call;
   state_->open.clear();
-  const auto failed = [&] { return library_failure("taking the file's bytes", state_->subject); };
+  const auto failed = [&] { return call.failure("taking the file's bytes", state_->subject); };
   if (H5Fflush(state_->file.id(), H5F_SCOPE_LOCAL) < 0) return failed();
   const ssize_t size = H5Fget_file_image(state_->file.id(), nullptr, 0);
   if (size < 0) return failed();

@@ -1,0 +1,150 @@
+#include "demo/histories.h"
+
+#include <algorithm>
+#include <cmath>
+#include <numbers>
+#include <stdexcept>
+
+namespace bentlight::demo {
+
+namespace {
+
+constexpr double two_pi = 2.0 * std::numbers::pi;
+
+/// Streams of random numbers of a view, counted from View::stream.
+enum Stream : std::uint64_t { waves, modulation, phase, tip, tilt, piston, pressure, acceleration, phases };
+
+std::vector<float> normal_series(const Scenario& scenario,
+                                 const View& view,
+                                 Stream stream,
+                                 std::size_t count) {
+  std::vector<float> series(count);
+  NormalNumbers(scenario.options.seed, view.stream + stream).fill(0, series);
+  return series;
+}
+
+/// A stationary Gaussian series of unit variance whose correlation falls by 1/e in `memory` steps (AR(1)).
+std::vector<float> wandering_series(std::vector<float> normals, double memory) {
+  const double keep = std::exp(-1.0 / memory), renew = std::sqrt(1.0 - keep * keep);
+  double value = normals.empty() ? 0.0 : static_cast<double>(normals[0]);
+  for (std::size_t i = 1; i < normals.size(); ++i) {
+    value = keep * value + renew * static_cast<double>(normals[i]);
+    normals[i] = static_cast<float>(value);
+  }
+  return normals;
+}
+
+}  // namespace
+
+Histories::Histories(const Scenario& scenario,
+                     const View& view,
+                     const Amplitudes& amplitudes,
+                     std::size_t instants)
+    : scenario_(scenario),
+      view_(view),
+      order_(scenario),
+      tunnel_(view.run == Run::tunnel),
+      roll_up_rms_m_(amplitudes.roll_up_m / std::numbers::sqrt2),
+      wave_numbers_(scenario.options.seed, view.stream + waves) {
+  make_roll_up(scenario.roll_up, amplitudes.roll_up_m, instants + scenario.signals.pressure_lead_frames);
+  if (tunnel_) make_tracker(scenario.tunnel, instants);
+  pressure_noise_ = normal_series(scenario, view, pressure, instants);
+  acceleration_noise_ = normal_series(scenario, view, acceleration, instants);
+
+  const std::size_t count = scenario.waves.size();
+  const double step = scenario.frame_step_s(), keep = std::exp(-step / scenario.random.decorrelation_time_s);
+  normals_.resize(2 * count);
+  wave_numbers_.fill(0, normals_);
+  for (std::size_t k = 0; k < count; ++k) {
+    const double angle = -scenario.waves[k].kx_rad_m * scenario.random.convective_speed_m_s * step;
+    turn_real_.push_back(keep * std::cos(angle));
+    turn_imaginary_.push_back(keep * std::sin(angle));
+    renewal_m_.push_back(amplitudes.wave_m[k] * std::sqrt(1.0 - keep * keep));
+    real_.push_back(amplitudes.wave_m[k] * static_cast<double>(normals_[k]));
+    imaginary_.push_back(amplitudes.wave_m[k] * static_cast<double>(normals_[count + k]));
+  }
+}
+
+void Histories::make_roll_up(const RollUp& law, double amplitude_m, std::size_t instants) {
+  const double step = scenario_.frame_step_s(), s = law.modulation;
+  const auto slow =
+      wandering_series(normal_series(scenario_, view_, modulation, instants), law.modulation_memory_s / step);
+  const auto kicks = normal_series(scenario_, view_, phase, instants);
+  // A Wiener phase of variance 2 t / memory leaves exp(-t / memory) of the correlation.
+  const double kick = std::sqrt(2.0 * step / law.phase_memory_s);
+  double angle = -two_pi * uniform_number(scenario_.options.seed, view_.stream + phases, 0);
+  roll_up_m_.reserve(instants);
+  for (std::size_t i = 0; i < instants; ++i) {
+    const double size = amplitude_m * std::exp(s * static_cast<double>(slow[i]) - s * s);
+    roll_up_m_.emplace_back(std::polar(size, angle));
+    angle = std::remainder(angle - two_pi * law.frequency_hz * step - kick * static_cast<double>(kicks[i]),
+                           two_pi);
+  }
+}
+
+void Histories::make_tracker(const TunnelEffects& law, std::size_t instants) {
+  const double step = scenario_.frame_step_s();
+  const auto scaled = [&](Stream stream, double memory_s, double rms) {
+    auto series = wandering_series(normal_series(scenario_, view_, stream, instants), memory_s / step);
+    for (float& value : series) value *= static_cast<float>(rms);
+    return series;
+  };
+  tip_rad_ = scaled(tip, law.jitter_memory_s, law.jitter_rad);
+  tilt_rad_ = scaled(tilt, law.jitter_memory_s, law.jitter_rad);
+  piston_m_ = scaled(piston, law.piston_memory_s, law.piston_m);
+  const double start = two_pi * uniform_number(scenario_.options.seed, view_.stream + phases, 1);
+  for (std::size_t i = 0; i < instants; ++i) {
+    const double angle = start + two_pi * law.vibration_hz * step * static_cast<double>(i);
+    tip_rad_[i] += static_cast<float>(law.vibration_rad * std::numbers::sqrt2 * std::sin(angle));
+  }
+}
+
+void Histories::advance_waves() {
+  const std::size_t count = real_.size();
+  wave_numbers_.fill(++wave_instant_, normals_);
+  for (std::size_t k = 0; k < count; ++k) {
+    const double real = turn_real_[k] * real_[k] - turn_imaginary_[k] * imaginary_[k];
+    const double imaginary = turn_imaginary_[k] * real_[k] + turn_real_[k] * imaginary_[k];
+    real_[k] = real + renewal_m_[k] * static_cast<double>(normals_[k]);
+    imaginary_[k] = imaginary + renewal_m_[k] * static_cast<double>(normals_[count + k]);
+  }
+}
+
+void Histories::weights_at(std::size_t instant, float* weights) {
+  if (instant < wave_instant_) throw std::invalid_argument("Histories: instants must not fall");
+  while (wave_instant_ < instant) advance_waves();
+  // Re(z exp(i k x)) = Re z cos(k x) - Im z sin(k x)
+  const auto count = static_cast<Eigen::Index>(real_.size());
+  for (Eigen::Index k = 0; k < count; ++k) {
+    weights[k] = static_cast<float>(real_[static_cast<std::size_t>(k)]);
+    weights[order_.pairs + k] = static_cast<float>(-imaginary_[static_cast<std::size_t>(k)]);
+  }
+  weights[count] = roll_up_m_[instant].real();
+  weights[order_.pairs + count] = -roll_up_m_[instant].imag();
+  weights[order_.steady()] = 1.0F;
+  weights[order_.piston()] = tunnel_ ? piston_m_[instant] : 0.0F;
+  weights[order_.tip()] = tunnel_ ? tip_rad_[instant] : 0.0F;
+  weights[order_.tilt()] = tunnel_ ? tilt_rad_[instant] : 0.0F;
+}
+
+float Histories::surface_pressure_pa(std::size_t instant) const {
+  const SignalLaws& law = scenario_.signals;
+  const double coherent =
+      static_cast<double>(roll_up_m_[instant + law.pressure_lead_frames].real()) / roll_up_rms_m_;
+  return static_cast<float>(law.pressure_pa * (std::sqrt(law.pressure_coherent_share) * coherent +
+                                               std::sqrt(1.0 - law.pressure_coherent_share) *
+                                                   static_cast<double>(pressure_noise_[instant])));
+}
+
+float Histories::acceleration_m_s2(std::size_t instant) const {
+  const SignalLaws& law = scenario_.signals;
+  const TunnelEffects& tunnel = scenario_.tunnel;
+  const double jitter =
+      static_cast<double>(tip_rad_.at(instant)) / std::hypot(tunnel.jitter_rad, tunnel.vibration_rad);
+  const double r = law.acceleration_correlation;
+  return static_cast<float>(
+      law.acceleration_m_s2 *
+      (r * jitter + std::sqrt(1.0 - r * r) * static_cast<double>(acceleration_noise_[instant])));
+}
+
+}  // namespace bentlight::demo

@@ -10,7 +10,8 @@
 
 namespace bentlight::archive {
 
-/// Starts the probe on files. The file is opened here and handed over as a descriptor; the child can open nothing.
+/// Starts the probe on files. The file is opened here and handed over as a descriptor; the child can open
+/// nothing.
 ///
 ///   threads  safe from any thread; each call has a child of its own
 class ProbeClient {
@@ -23,11 +24,12 @@ class ProbeClient {
   ///   errors  not_hdf5, damaged_file (also: the child died or ran out of its limits), layout_mismatch,
   ///           unsupported_storage, unsafe_file (external links or storage), too_large, file_missing,
   ///           permission_denied, file_changed when the file changed meanwhile. The text names the reason.
-  Expected<WavefrontFile> read_structure(const FileSystem& files, const std::filesystem::path& file,
+  Expected<WavefrontFile> read_structure(const FileSystem& files,
+                                         const std::filesystem::path& file,
                                          const Layout& layout) const;
 
-  /// The file's whole tree as JSON text, for `bentlight inspect`: groups, datasets with shape, type, storage and
-  /// filters, attributes.
+  /// The file's whole tree as JSON text, for `bentlight inspect`: groups, datasets with shape, type, storage
+  /// and filters, attributes.
   Expected<std::string> describe(const FileSystem& files, const std::filesystem::path& file) const;
 
  private:

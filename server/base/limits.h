@@ -19,10 +19,15 @@ inline constexpr std::uint64_t chunks = 16'000'000;         // 256 MiB of chunk 
 inline constexpr std::uint64_t chunk_bytes = 256 * mebi;    // decoded; a worker holds one
 inline constexpr std::size_t attribute_text_bytes = 64 * kibi;
 inline constexpr std::size_t signals = 256;
+inline constexpr std::uint64_t time_stamps = 32'000'000;    // 256 MiB of doubles, held while a view is read
+inline constexpr std::size_t filters = 8;                   // of one pipeline; three are known
 
 // The probe: a foreign file's parser gets this much and no more.
 inline constexpr std::size_t probe_memory_bytes = 1 * gibi;
 inline constexpr std::chrono::seconds probe_seconds{60};
+inline constexpr std::size_t probe_reply_bytes = 640 * mebi;  // the longest chunk table, times and signals
+inline constexpr std::size_t tree_objects = 10'000;           // described to a person
+inline constexpr std::size_t tree_depth = 32;
 
 // Reading. 256 KiB stay inside a core's second-level cache: pieces of 4 MiB read 25 % slower (tests/bench, read).
 inline constexpr std::size_t read_piece_bytes = 256 * kibi;

@@ -8,6 +8,8 @@
 #include <optional>
 #include <string>
 #include <system_error>
+#include <utility>
+#include <vector>
 
 #include "base/file.h"
 #include "demo/expectation.h"
@@ -34,8 +36,13 @@ Expected<void> check_range(const char* option,
 
 Expected<void> check_options(const DemoOptions& options) {
   return check_range("views", options.views_per_run, 1, 2000)
-      .and_then([&] { return check_range("frames", options.frames, 64, std::uint64_t{1} << 31); })
-      .and_then([&] { return check_range("grid", options.grid, 8, 1024); });
+      .and_then([&] { return check_range("frames", options.frames, 64, 10'000'000); })
+      .and_then([&] { return check_range("grid", options.grid, 8, 512); });
+}
+
+std::string text_member(const nlohmann::json& json, const char* name) {
+  const bool there = json.is_object() && json.contains(name) && json[name].is_string();
+  return there ? json[name].get<std::string>() : std::string();
 }
 
 /// The files of an earlier demo archive in `folder`; nothing when the folder holds something else.
@@ -43,50 +50,71 @@ std::optional<std::vector<fs::path>> files_of_earlier_archive(const fs::path& fo
   const auto text = read_whole(PosixFileSystem(), folder / known_answers_file, answers_limit_bytes);
   if (!text) return std::nullopt;
   const auto answers = nlohmann::json::parse(*text, nullptr, /*allow_exceptions=*/false);
-  if (!answers.is_object() || answers.value("generator", "") != generator_name) return std::nullopt;
+  if (text_member(answers, "generator") != generator_name) return std::nullopt;
   std::vector<fs::path> files;
-  for (const auto& view : answers.value("views", nlohmann::json::array())) {
-    const fs::path file = view.is_object() ? view.value("file", "") : "";
+  if (!answers.contains("views")) return files;
+  for (const auto& view : answers["views"]) {
+    const fs::path file = text_member(view, "file");
     // The list decides what is deleted, so it may name nothing outside its own campaign.
-    const bool own = file.lexically_normal() == file && !file.empty() && *file.begin() == campaign_name;
-    if (own && file.extension() == ".h5") files.push_back(file);
+    const bool own = !file.empty() && file.lexically_normal() == file && *file.begin() == campaign_name;
+    if (own && file.extension() == ".h5") files.push_back(folder / file);
   }
   return files;
 }
 
-/// Makes `folder` ready: new, empty, or cleared of an earlier demo archive.
-Expected<void> prepare_folder(const fs::path& folder) {
+/// Where the archive is going to be, and what of an earlier one lies there.
+struct Site {
+  fs::path folder;
+  std::vector<fs::path> earlier;
+};
+
+/// Makes the folder if need be and looks into it: it must be empty, or hold an earlier demo archive.
+Expected<Site> open_site(const fs::path& folder) {
   std::error_code error;
   fs::create_directories(folder, error);
   if (error) return system_failure(error.value(), "making the folder", folder.string());
   const bool empty = fs::is_empty(folder, error);
   if (error) return system_failure(error.value(), "looking into the folder", folder.string());
-  if (empty) return {};
-  const auto files = files_of_earlier_archive(folder);
-  if (!files) {
-    return failure(
-        ErrorCode::bad_option,
-        "the folder is not empty and holds no demo archive; nothing was written. Name another folder.",
-        folder.string());
-  }
-  for (const fs::path& file : *files) {
-    fs::remove(folder / file, error);
-    if (error) return system_failure(error.value(), "removing", (folder / file).string());
-  }
-  return {};
+  if (empty) return Site{folder, {}};
+  if (auto files = files_of_earlier_archive(folder)) return Site{folder, std::move(*files)};
+  return failure(
+      ErrorCode::bad_option,
+      "the folder is not empty and holds no demo archive; nothing was written. Name another folder.",
+      folder.string());
 }
 
-Expected<void> check_room(const fs::path& folder, std::uint64_t frame_bytes) {
+/// Free bytes, with those that the earlier archive is going to give back.
+Expected<std::uint64_t> room_bytes(const Site& site) {
   std::error_code error;
-  const fs::space_info space = fs::space(folder, error);
-  if (error) return system_failure(error.value(), "asking for free space", folder.string());
+  std::uint64_t room = fs::space(site.folder, error).available;
+  if (error) return system_failure(error.value(), "asking for free space", site.folder.string());
+  for (const fs::path& file : site.earlier) {
+    const auto size = fs::file_size(file, error);
+    if (!error) room += size;
+  }
+  return room;
+}
+
+Expected<void> check_room(const Site& site, std::uint64_t frame_bytes) {
+  const auto room = room_bytes(site);
+  if (!room) return failure(room);
   const std::uint64_t needed = frame_bytes + frame_bytes / 50 + (1 << 20);  // signals, times and headers
-  if (space.available >= needed) return {};
+  if (*room >= needed) return {};
   return failure(
       ErrorCode::disk_full,
-      fmt::format("the archive takes up to {:.2f} GB, but only {:.2f} GB are free; nothing was written",
-                  static_cast<double>(needed) * 1e-9, static_cast<double>(space.available) * 1e-9),
-      folder.string());
+      fmt::format("the archive takes up to {:.2f} GB, but there is room for {:.2f} GB; nothing was written",
+                  static_cast<double>(needed) * 1e-9, static_cast<double>(*room) * 1e-9),
+      site.folder.string());
+}
+
+Expected<void> clear_earlier(const Site& site) {
+  std::error_code error;
+  for (const fs::path& file : site.earlier) {
+    fs::remove(unfinished(file), error);
+    if (!error) fs::remove(file, error);
+    if (error) return system_failure(error.value(), "removing", file.string());
+  }
+  return {};
 }
 
 Expected<void> write_text(const fs::path& path, const std::string& text) {
@@ -140,9 +168,10 @@ Expected<DemoReport> write_demo_archive(const fs::path& folder,
                                         const std::function<void(const DemoProgress&)>& progress,
                                         const std::stop_token& stop) {
   const std::uint64_t frame_bytes = demo_frame_bytes(options);
-  auto ready = check_options(options).and_then([&] { return prepare_folder(folder); }).and_then([&] {
-    return check_room(folder, frame_bytes);
-  });
+  auto ready =
+      check_options(options).and_then([&] { return open_site(folder); }).and_then([&](const Site& site) {
+        return check_room(site, frame_bytes).and_then([&] { return clear_earlier(site); });
+      });
   if (!ready) return failure(ready);
 
   const Scenario scenario = make_scenario(options);

@@ -18,8 +18,8 @@ enum class DemoStorage { mixed, contiguous, chunked, deflate };
 
 struct DemoOptions {
   std::size_t views_per_run = 24;  // 1 to 2000
-  std::size_t frames = 2048;       // of each view, 64 to 2^31
-  std::size_t grid = 64;           // points across the aperture, 8 to 1024
+  std::size_t frames = 2048;       // of each view, 64 to 10 million
+  std::size_t grid = 64;           // points across the aperture, 8 to 512
   std::uint64_t seed = 1;
   DemoStorage storage = DemoStorage::mixed;
 };
@@ -47,7 +47,7 @@ std::uint64_t demo_frame_bytes(const DemoOptions& options);
 ///            disk_full (also when the room would not suffice, before anything is written),
 ///            permission_denied, io_error, cancelled
 ///   threads  `progress` is called from the pool's threads, never twice at once
-///   cost     bound by the product of time histories and shapes, about 134 multiply-adds to a value
+///   cost     bound by the product of time histories and shapes, about 67 multiply-adds to a value
 Expected<DemoReport> write_demo_archive(const std::filesystem::path& folder,
                                         const DemoOptions& options,
                                         WorkPool& pool,

@@ -116,12 +116,12 @@ void Histories::weights_at(std::size_t instant, float* weights) {
   // Re(z exp(i k x)) = Re z cos(k x) - Im z sin(k x)
   const auto count = static_cast<Eigen::Index>(real_.size());
   for (Eigen::Index k = 0; k < count; ++k) {
-    weights[k] = static_cast<float>(real_[static_cast<std::size_t>(k)]);
-    weights[order_.pairs + k] = static_cast<float>(-imaginary_[static_cast<std::size_t>(k)]);
+    weights[order_.cosine(k)] = static_cast<float>(real_[static_cast<std::size_t>(k)]);
+    weights[order_.sine(k)] = static_cast<float>(-imaginary_[static_cast<std::size_t>(k)]);
   }
-  weights[count] = roll_up_m_[instant].real();
-  weights[order_.pairs + count] = -roll_up_m_[instant].imag();
-  weights[order_.steady()] = 1.0F;
+  weights[order_.cosine(count)] = roll_up_m_[instant].real();
+  weights[order_.sine(count)] = -roll_up_m_[instant].imag();
+  weights[order_.steady_even()] = weights[order_.steady_odd()] = 1.0F;
   weights[order_.piston()] = tunnel_ ? piston_m_[instant] : 0.0F;
   weights[order_.tip()] = tunnel_ ? tip_rad_[instant] : 0.0F;
   weights[order_.tilt()] = tunnel_ ? tilt_rad_[instant] : 0.0F;

@@ -13,7 +13,9 @@ DemoGrid make_grid(const Scenario& scenario) {
   grid.across = across;
   grid.step_m = diameter / static_cast<double>(across);
   for (std::size_t i = 0; i < across; ++i) {
-    grid.centers_m.push_back((static_cast<double>(i) + 0.5) * grid.step_m - 0.5 * diameter);
+    // Whole numbers of half steps, so that the symmetry is exact.
+    const auto half_steps = static_cast<double>(2 * i + 1) - static_cast<double>(across);
+    grid.centers_m.push_back(half_steps * 0.5 * grid.step_m);
   }
   for (const double y : grid.centers_m) {
     for (const double x : grid.centers_m) grid.inside.push_back(std::hypot(x, y) <= 0.5 * diameter ? 1 : 0);
@@ -42,59 +44,69 @@ using Phasors = std::vector<std::complex<double>>;
 
 Phasors phasors(double k_rad_m, const std::vector<double>& centers_m) {
   Phasors values;
+  values.reserve(centers_m.size());
   for (const double center : centers_m) values.push_back(std::polar(1.0, k_rad_m * center));
   return values;
 }
 
-/// exp(i (kx x + ky y)) is a product, so that a wave needs a sine per row and column and not per point.
-void fill_pair(ShapeMatrix& shapes,
-               Eigen::Index cosine,
-               Eigen::Index sine,
-               const Wave& wave,
-               const DemoGrid& grid,
-               double scale) {
-  const Phasors along_x = phasors(wave.kx_rad_m, grid.centers_m),
-                along_y = phasors(wave.ky_rad_m, grid.centers_m);
-  Eigen::Index point = 0;
-  for (const auto& y : along_y) {
-    for (const auto& x : along_x) {
-      const std::complex<double> value = grid.inside[static_cast<std::size_t>(point)] ? scale * x * y : 0.0;
-      shapes(cosine, point) = static_cast<float>(value.real());
-      shapes(sine, point) = static_cast<float>(value.imag());
-      ++point;
-    }
+/// Calls `take(point, x, y)` for the points of the half grid with the members of two lists, one per column
+/// and row.
+template <class List, class Take>
+void for_half(const DemoGrid& grid, const List& along_x, const List& along_y, const Take& take) {
+  const std::size_t count = half_points(grid);
+  for (std::size_t point = 0; point < count; ++point) {
+    take(point, along_x[point % grid.across], along_y[point / grid.across]);
   }
+}
+
+/// exp(i (kx x + ky y)) is a product, so that a wave needs a sine per row and column and not per point.
+void fill_pair(float* cosines, float* sines, const Wave& wave, const DemoGrid& grid, double scale) {
+  for_half(grid, phasors(wave.kx_rad_m, grid.centers_m), phasors(wave.ky_rad_m, grid.centers_m),
+           [&](std::size_t point, const std::complex<double>& x, const std::complex<double>& y) {
+             const std::complex<double> value = grid.inside[point] ? scale * x * y : 0.0;
+             cosines[point] = static_cast<float>(value.real());
+             sines[point] = static_cast<float>(value.imag());
+           });
 }
 
 }  // namespace
 
-ShapeMatrix shape_matrix(const Scenario& scenario,
-                         const DemoGrid& grid,
-                         const SteadyLensing& steady,
-                         double units_per_metre,
-                         float outside) {
+ShapeMatrix half_shapes(const Scenario& scenario,
+                        const DemoGrid& grid,
+                        const SteadyLensing& steady,
+                        double units_per_metre,
+                        float outside) {
   const ShapeOrder order(scenario);
-  ShapeMatrix shapes = ShapeMatrix::Zero(order.count(), static_cast<Eigen::Index>(grid.inside.size()));
+  ShapeMatrix shapes = ShapeMatrix::Zero(order.count(), static_cast<Eigen::Index>(half_points(grid)));
+  const auto row = [&](Eigen::Index shape) { return shapes.row(shape).data(); };
   const auto waves = pair_waves(scenario);
   for (Eigen::Index pair = 0; pair < order.pairs; ++pair) {
-    fill_pair(shapes, pair, order.pairs + pair, waves[static_cast<std::size_t>(pair)], grid, units_per_metre);
+    const Wave& wave = waves[static_cast<std::size_t>(pair)];
+    fill_pair(row(order.cosine(pair)), row(order.sine(pair)), wave, grid, units_per_metre);
   }
   const double radius = 0.5 * scenario.setting.aperture_diameter_m;
-  Eigen::Index point = 0;
-  for (const double y : grid.centers_m) {
-    for (const double x : grid.centers_m) {
-      const bool inside = grid.inside[static_cast<std::size_t>(point)] != 0;
-      const double steady_here = units_per_metre * steady_lensing_m(steady, x, y, radius);
-      shapes(order.steady(), point) = inside ? static_cast<float>(steady_here) : outside;
-      if (inside) {
-        shapes(order.piston(), point) = static_cast<float>(units_per_metre);
-        shapes(order.tip(), point) = static_cast<float>(units_per_metre * x);
-        shapes(order.tilt(), point) = static_cast<float>(units_per_metre * y);
-      }
-      ++point;
+  for_half(grid, grid.centers_m, grid.centers_m, [&](std::size_t point, double x, double y) {
+    if (!grid.inside[point]) {
+      row(order.steady_even())[point] = outside;
+      return;
     }
-  }
+    const double here = 0.5 * units_per_metre * steady_lensing_m(steady, x, y, radius);
+    const double opposite = 0.5 * units_per_metre * steady_lensing_m(steady, -x, -y, radius);
+    row(order.steady_even())[point] = static_cast<float>(here + opposite);
+    row(order.steady_odd())[point] = static_cast<float>(here - opposite);
+    row(order.piston())[point] = static_cast<float>(units_per_metre);
+    row(order.tip())[point] = static_cast<float>(units_per_metre * x);
+    row(order.tilt())[point] = static_cast<float>(units_per_metre * y);
+  });
   return shapes;
+}
+
+void unfold(std::span<const float> even, std::span<const float> odd, std::span<float> frame) {
+  float* const last = frame.data() + frame.size() - 1;
+  for (std::size_t point = 0; point < even.size(); ++point) {
+    frame[point] = even[point] + odd[point];
+    *(last - point) = even[point] - odd[point];
+  }
 }
 
 }  // namespace bentlight::demo

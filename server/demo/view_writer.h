@@ -18,6 +18,9 @@ std::size_t block_frames(const DemoOptions& options);
 /// Frames of a chunk, for views that are kept in chunks.
 std::size_t chunk_frames(const DemoOptions& options);
 
+/// The name of a view's file while it is being written.
+std::filesystem::path unfinished(const std::filesystem::path& file);
+
 /// Writes a view's file below `folder`: first under another name, so that a reader of the archive sees it
 /// whole or not at all. `wrote` hears of the bytes of frames after every block.
 ///

@@ -48,7 +48,8 @@ struct DriverCalls {
     if (info == nullptr) return nullptr;
     if ((flags & H5F_ACC_RDWR) != 0) return nullptr;
     if (std::string_view(name) != FdFile::name) {
-      info->file->refused_name_ = name;
+      // The library tries a name in several folders; the first is the one that the file gave.
+      if (!info->file->refused_name_) info->file->refused_name_ = name;
       return nullptr;
     }
     auto* opened = static_cast<OpenFile*>(std::calloc(1, sizeof(OpenFile)));

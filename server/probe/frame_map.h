@@ -1,6 +1,7 @@
 // Where the frames of a dataset lie in the file, and how they are coded.
 #pragma once
 
+#include <array>
 #include <string>
 
 #include "archive/wavefront_file.h"
@@ -9,9 +10,14 @@
 
 namespace bentlight::probe {
 
-/// Fills shape, element, storage and chunks of the map of an open dataset; units and axes are the caller's.
+/// The map of an open dataset whose frames, rows and columns lie along `axes`; units and scale are the
+/// caller's.
 ///
+///   needs   axes that are an order of 0, 1, 2
 ///   errors  layout_mismatch, unsupported_storage, damaged_file, too_large
-Expected<archive::FrameMap> read_frame_map(const OpenedFile& file, hid_t dataset, const std::string& path);
+Expected<archive::FrameMap> read_frame_map(const OpenedFile& file,
+                                           hid_t dataset,
+                                           const std::string& path,
+                                           const std::array<int, 3>& axes);
 
 }  // namespace bentlight::probe

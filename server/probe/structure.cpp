@@ -138,20 +138,14 @@ class StructureReader {
   // The map.
 
   Expected<void> read_map() {
-    auto map = read_frame_map(file_, frames_.id(), layout_.dataset);
-    if (!map) return failure(map);
-    found_.map = std::move(*map);
-    found_.map.axes = layout_.axes;
     std::array<int, 3> sorted = layout_.axes;
     std::ranges::sort(sorted);
     if (sorted != std::array<int, 3>{0, 1, 2}) {
       return failure(ErrorCode::layout_mismatch, "the layout's axes are not an order of 0, 1, 2");
     }
-    if (found_.map.rows() > limits::grid_points / found_.map.columns()) {
-      return failure(ErrorCode::too_large,
-                     fmt::format("frames of {} x {} points; at most {} points are read", found_.map.rows(),
-                                 found_.map.columns(), limits::grid_points));
-    }
+    auto map = read_frame_map(file_, frames_.id(), layout_.dataset, layout_.axes);
+    if (!map) return failure(map);
+    found_.map = std::move(*map);
     for (const auto step :
          {&StructureReader::read_unit, &StructureReader::read_sign, &StructureReader::read_scale}) {
       if (auto done = (this->*step)(); !done) return done;

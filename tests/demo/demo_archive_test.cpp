@@ -6,8 +6,6 @@
 #include <gtest/gtest.h>
 #include <unistd.h>
 
-#include <array>
-#include <cstdio>
 #include <filesystem>
 #include <fstream>
 #include <map>
@@ -15,31 +13,19 @@
 #include <string>
 #include <vector>
 
+#include "support/command.h"
+
 namespace bentlight::demo {
 namespace {
 
 namespace fs = std::filesystem;
 using testing::HasSubstr;
 using testing::Not;
+using testing_support::Finished;
+using testing_support::run;
 
 constexpr DemoOptions small = {.views_per_run = 6, .frames = 1024, .grid = 24, .seed = 11};
 constexpr DemoOptions tiny = {.views_per_run = 2, .frames = 64, .grid = 8, .seed = 11};
-
-struct Finished {
-  int status = 0;
-  std::string output;
-};
-
-Finished run(const std::string& command) {
-  Finished finished;
-  std::FILE* pipe = ::popen((command + " 2>&1").c_str(), "r");
-  std::array<char, 4096> piece{};
-  while (const std::size_t count = std::fread(piece.data(), 1, piece.size(), pipe)) {
-    finished.output.append(piece.data(), count);
-  }
-  finished.status = ::pclose(pipe);
-  return finished;
-}
 
 std::string text_of(const fs::path& path) {
   std::ifstream file(path, std::ios::binary);

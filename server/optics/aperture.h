@@ -14,9 +14,9 @@ namespace bentlight::optics {
 struct Grid {
   std::size_t rows = 0;
   std::size_t columns = 0;
-  std::vector<double> x_m;          // [columns], ascending
-  std::vector<double> y_m;          // [rows], ascending
-  std::vector<std::uint8_t> mask;   // [rows * columns], 1 where there is light
+  std::vector<double> x_m;         // [columns], ascending
+  std::vector<double> y_m;         // [rows], ascending
+  std::vector<std::uint8_t> mask;  // [rows * columns], 1 where there is light
 };
 
 /// A stretch of neighbouring points in the row-major grid.
@@ -43,7 +43,8 @@ class Aperture {
 
   /// The part of this aperture inside a disc (or annulus); a point belongs when its center does.
   ///
-  ///   errors  aperture_outside_mask when the disc reaches beyond the light (judged by the disc's rim against the
+  ///   errors  aperture_outside_mask when the disc reaches beyond the light (judged by the disc's rim against
+  ///   the
   ///           view's own outline, with one grid step of grace), degenerate_aperture
   Expected<Aperture> cut(const ApertureCut& cut) const;
 
@@ -57,14 +58,21 @@ class Aperture {
   double center_y_m() const { return center_y_m_; }
   double radius_m() const { return radius_m_; }  // of the smallest centered disc that holds the points' cells
 
+  double step_m() const { return step_m_; }  // of the grid
+
+  /// Where this aperture's points stand among those of `whole`, of which it is a part. [points]
+  std::vector<std::size_t> positions_in(const Aperture& whole) const;
+
   /// Scatters `values` [points] onto the grid [rows][columns]; NaN elsewhere.
   std::vector<double> on_grid(std::span<const double> values) const;
 
  private:
+  bool has_light_near(double x_m, double y_m) const;
+
   std::size_t rows_ = 0, columns_ = 0;
   std::vector<PointRun> runs_;
   std::vector<double> x_m_, y_m_;
-  double center_x_m_ = 0.0, center_y_m_ = 0.0, radius_m_ = 0.0;
+  double center_x_m_ = 0.0, center_y_m_ = 0.0, radius_m_ = 0.0, step_m_ = 0.0;
 };
 
 }  // namespace bentlight::optics

@@ -1,0 +1,156 @@
+// Compiled with associative sums (server/CMakeLists.txt), so that each sum runs in several lanes. Nothing
+// here may rely on the order of additions; NaN stays NaN.
+#include "optics/frame_kernels.h"
+
+#include <algorithm>
+
+namespace bentlight::optics {
+
+namespace {
+
+// Points whose sum stays in float: 64 additions a lane keep its error below one float step on average.
+constexpr std::size_t tile_points = 512;
+
+template <std::size_t Frames>
+void plane_sums_of(const float* frames, std::size_t points, const float* a, const float* b, double* sums) {
+  double total[Frames][3] = {};
+  for (std::size_t tile = 0; tile < points; tile += tile_points) {
+    const std::size_t end = std::min(points, tile + tile_points);
+    float s[Frames] = {}, sa[Frames] = {}, sb[Frames] = {};
+    for (std::size_t p = tile; p < end; ++p) {
+      for (std::size_t f = 0; f < Frames; ++f) {
+        const float value = frames[f * points + p];
+        s[f] += value;
+        sa[f] += value * a[p];
+        sb[f] += value * b[p];
+      }
+    }
+    for (std::size_t f = 0; f < Frames; ++f) {
+      total[f][0] += static_cast<double>(s[f]);
+      total[f][1] += static_cast<double>(sa[f]);
+      total[f][2] += static_cast<double>(sb[f]);
+    }
+  }
+  for (std::size_t f = 0; f < Frames; ++f) {
+    for (std::size_t k = 0; k < 3; ++k) sums[f * 3 + k] = total[f][k];
+  }
+}
+
+template <std::size_t Frames, bool HasCenter>
+void subtract_plane_of(float* frames,
+                       std::size_t points,
+                       const float* a,
+                       const float* b,
+                       const float* center,
+                       const float* plane,
+                       double* squares) {
+  double total[Frames] = {};
+  for (std::size_t tile = 0; tile < points; tile += tile_points) {
+    const std::size_t end = std::min(points, tile + tile_points);
+    float sum[Frames] = {};
+    for (std::size_t p = tile; p < end; ++p) {
+      const float base = HasCenter ? center[p] : 0.0F;
+      for (std::size_t f = 0; f < Frames; ++f) {
+        const float* c = plane + f * 3;
+        const float left = frames[f * points + p] - (c[0] + c[1] * a[p] + c[2] * b[p]) - base;
+        frames[f * points + p] = left;
+        sum[f] += left * left;
+      }
+    }
+    for (std::size_t f = 0; f < Frames; ++f) total[f] += static_cast<double>(sum[f]);
+  }
+  std::copy(total, total + Frames, squares);
+}
+
+template <std::size_t Frames>
+void add_about_pilot_of(
+    const float* frames, std::size_t points, const float* pilot, float* sum, float* squares) {
+  for (std::size_t p = 0; p < points; ++p) {
+    float s = 0.0F, q = 0.0F;
+    for (std::size_t f = 0; f < Frames; ++f) {
+      const float difference = frames[f * points + p] - pilot[p];
+      s += difference;
+      q += difference * difference;
+    }
+    sum[p] += s;
+    squares[p] += q;
+  }
+}
+
+/// Calls `four(f)` for every whole group of four frames and `one(f)` for each that is left.
+template <class Four, class One>
+void in_fours(std::size_t count, Four four, One one) {
+  std::size_t f = 0;
+  for (; f + 4 <= count; f += 4) four(f);
+  for (; f < count; ++f) one(f);
+}
+
+}  // namespace
+
+void plane_sums(const float* frames,
+                std::size_t count,
+                std::size_t points,
+                const float* a,
+                const float* b,
+                double* sums) {
+  in_fours(
+      count, [&](std::size_t f) { plane_sums_of<4>(frames + f * points, points, a, b, sums + f * 3); },
+      [&](std::size_t f) { plane_sums_of<1>(frames + f * points, points, a, b, sums + f * 3); });
+}
+
+void subtract_plane(float* frames,
+                    std::size_t count,
+                    std::size_t points,
+                    const float* a,
+                    const float* b,
+                    const float* center,
+                    const float* plane,
+                    double* squares) {
+  const auto subtract = [&]<std::size_t Frames>(std::size_t f) {
+    float* const first = frames + f * points;
+    if (center != nullptr) {
+      subtract_plane_of<Frames, true>(first, points, a, b, center, plane + f * 3, squares + f);
+    } else {
+      subtract_plane_of<Frames, false>(first, points, a, b, center, plane + f * 3, squares + f);
+    }
+  };
+  in_fours(
+      count, [&](std::size_t f) { subtract.template operator()<4>(f); },
+      [&](std::size_t f) { subtract.template operator()<1>(f); });
+}
+
+void subtract_center(float* frames,
+                     std::size_t count,
+                     std::size_t points,
+                     const float* center,
+                     const float* lift,
+                     double* squares) {
+  for (std::size_t f = 0; f < count; ++f) {
+    float* const frame = frames + f * points;
+    double total = 0.0;
+    for (std::size_t tile = 0; tile < points; tile += tile_points) {
+      const std::size_t end = std::min(points, tile + tile_points);
+      float sum = 0.0F;
+      for (std::size_t p = tile; p < end; ++p) {
+        const float left = frame[p] - (center != nullptr ? center[p] : 0.0F) + lift[f];
+        frame[p] = left;
+        sum += left * left;
+      }
+      total += static_cast<double>(sum);
+    }
+    squares[f] = total;
+  }
+}
+
+void add_about_pilot(const float* frames,
+                     std::size_t count,
+                     std::size_t points,
+                     const float* pilot,
+                     float* sum,
+                     float* squares) {
+  in_fours(
+      count, [&](std::size_t f) { add_about_pilot_of<4>(frames + f * points, points, pilot, sum, squares); },
+      [&](std::size_t f) { add_about_pilot_of<1>(frames + f * points, points, pilot, sum, squares); });
+}
+
+}  // namespace bentlight::optics

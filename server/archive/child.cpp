@@ -74,6 +74,7 @@ class SpawnActions {
     ::posix_spawn_file_actions_addopen(&actions_, descriptor, "/dev/null", flags, 0);
   }
   void move(int from, int to) { ::posix_spawn_file_actions_adddup2(&actions_, from, to); }
+  void close_from(int lowest) { ::posix_spawn_file_actions_addclosefrom_np(&actions_, lowest); }
   const posix_spawn_file_actions_t* get() const { return &actions_; }
 
  private:
@@ -110,6 +111,7 @@ Expected<pid_t> spawn(const ChildTask& task, int output) {
   actions.move(output, 1);
   actions.null_device(2, O_WRONLY);
   actions.move(file.value(), task.file_descriptor_there);
+  actions.close_from(task.file_descriptor_there + 1);
   const SpawnAttributes attributes;
 
   std::string program = task.program.string();

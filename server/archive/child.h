@@ -29,8 +29,8 @@ struct ChildEnd {
   bool out_of_output = false;  // killed by us
 };
 
-/// Runs a program to its end. Of the environment it gets the library path alone; it has nothing to read, and
-/// its standard error is dropped.
+/// Runs a program to its end. It gets one descriptor of ours and of the environment the library path; it has
+/// nothing to read, and its standard error is dropped.
 ///
 ///   errors  io_error and others of the operating system when it cannot be started
 ///   threads safe from any thread

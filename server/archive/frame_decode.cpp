@@ -4,6 +4,7 @@
 #include <libdeflate.h>
 
 #include <algorithm>
+#include <bit>
 #include <cstring>
 #include <stdexcept>
 
@@ -32,6 +33,12 @@ std::uint64_t folded(std::uint64_t sum) {
   return sum == 0 ? 0 : (sum - 1) % 65535 + 1;
 }
 
+std::uint32_t big_endian_word(const std::byte* place) {
+  std::uint16_t word;
+  std::memcpy(&word, place, sizeof word);
+  return std::endian::native == std::endian::little ? __builtin_bswap16(word) : word;
+}
+
 std::uint32_t swapped_in_halves(std::uint32_t sum) {
   return (sum & 0x00ff00ffU) << 8 | (sum & 0xff00ff00U) >> 8;
 }
@@ -55,10 +62,18 @@ Expected<std::span<const std::byte>> without_checksum(std::span<const std::byte>
 
 /// A constant element size lets the compiler make whole registers of the loop.
 template <std::size_t element_bytes>
-void unshuffle_elements(const std::byte* in, std::byte* out, std::size_t elements) {
+void unshuffle_elements(const std::byte* in, std::size_t stride, std::span<std::byte> out) {
+  const std::size_t elements = out.size() / element_bytes;
   for (std::size_t i = 0; i < elements; ++i) {
-    for (std::size_t k = 0; k < element_bytes; ++k) out[i * element_bytes + k] = in[k * elements + i];
+    for (std::size_t k = 0; k < element_bytes; ++k) out[i * element_bytes + k] = in[k * stride + i];
   }
+}
+
+/// The whole of what a shuffle made; bytes beyond the last whole element it has left where they were.
+void unshuffle_all(std::span<const std::byte> in, std::size_t element_bytes, std::span<std::byte> out) {
+  const std::size_t whole = in.size() / element_bytes * element_bytes;
+  unshuffle(in, element_bytes, 0, out.first(whole));
+  std::ranges::copy(in.subspan(whole), out.begin() + static_cast<std::ptrdiff_t>(whole));
 }
 
 }  // namespace
@@ -76,21 +91,20 @@ bool Inflater::inflate(std::span<const std::byte> stream, std::span<std::byte> o
 }
 
 std::uint32_t fletcher32(std::span<const std::byte> bytes) {
-  const auto word = [&](std::size_t i) {
-    return std::to_integer<std::uint32_t>(bytes[2 * i]) << 8 |
-           std::to_integer<std::uint32_t>(bytes[2 * i + 1]);
-  };
   // Over a block of n words the second sum grows by n times the first and by the words weighted n … 1. With
-  // blocks of 4096 words neither product leaves 64 bits, and both loops run in vector registers.
-  constexpr std::size_t block = 4096;
+  // blocks of 256 words the weighted sum stays within 32 bits (256 * 257 / 2 * 65535 < 2^32), and the loop in
+  // vector registers.
+  constexpr std::size_t block = 256;
   const std::size_t words = bytes.size() / 2;
   std::uint64_t sum1 = 0, sum2 = 0;
   for (std::size_t first = 0; first < words; first += block) {
-    const std::size_t count = std::min(block, words - first);
-    std::uint64_t plain = 0, weighted = 0;
-    for (std::size_t i = 0; i < count; ++i) {
-      plain += word(first + i);
-      weighted += std::uint64_t{word(first + i)} * (count - i);
+    const auto count = static_cast<std::uint32_t>(std::min(block, words - first));
+    const std::byte* in = bytes.data() + 2 * first;
+    std::uint32_t plain = 0, weighted = 0;
+    for (std::uint32_t i = 0; i < count; ++i) {
+      const std::uint32_t word = big_endian_word(in + 2 * i);
+      plain += word;
+      weighted += word * (count - i);
     }
     sum2 = folded(sum2 + count * sum1 + weighted);
     sum1 = folded(sum1 + plain);
@@ -102,31 +116,33 @@ std::uint32_t fletcher32(std::span<const std::byte> bytes) {
   return static_cast<std::uint32_t>(sum2 << 16 | sum1);
 }
 
-void unshuffle(std::span<const std::byte> in, std::span<std::byte> out, std::size_t element_bytes) {
-  const std::size_t elements = in.size() / element_bytes;
+void unshuffle(std::span<const std::byte> shuffled,
+               std::size_t element_bytes,
+               std::size_t first_element,
+               std::span<std::byte> out) {
+  const std::size_t elements = element_bytes == 0 ? 0 : shuffled.size() / element_bytes;
+  if (first_element > elements || out.size() > (elements - first_element) * element_bytes) {
+    throw std::invalid_argument("unshuffle: the elements are not among the chunk's");
+  }
+  const std::byte* in = shuffled.data() + first_element;
   switch (element_bytes) {
     case 2:
-      unshuffle_elements<2>(in.data(), out.data(), elements);
-      break;
+      return unshuffle_elements<2>(in, elements, out);
     case 4:
-      unshuffle_elements<4>(in.data(), out.data(), elements);
-      break;
+      return unshuffle_elements<4>(in, elements, out);
     case 8:
-      unshuffle_elements<8>(in.data(), out.data(), elements);
-      break;
+      return unshuffle_elements<8>(in, elements, out);
     default:
       throw std::invalid_argument("unshuffle: no element type has this size");
   }
-  const std::size_t whole = elements * element_bytes;
-  std::copy(in.begin() + static_cast<std::ptrdiff_t>(whole), in.end(),
-            out.begin() + static_cast<std::ptrdiff_t>(whole));
 }
 
-Expected<std::span<const std::byte>> decode_chunk(const ChunkCoding& coding,
-                                                  std::uint32_t filter_mask,
-                                                  std::span<const std::byte> stored,
-                                                  DecodeScratch& scratch) {
+Expected<DecodedChunk> decode_chunk(const ChunkCoding& coding,
+                                    std::uint32_t filter_mask,
+                                    std::span<const std::byte> stored,
+                                    DecodeScratch& scratch) {
   std::span<const std::byte> bytes = stored;
+  bool is_shuffled = false;
   for (std::size_t i = coding.filters.size(); i-- > 0;) {
     if (is_skipped(filter_mask, i)) continue;
     // The buffer that does not hold this stage's input takes its output.
@@ -149,8 +165,12 @@ Expected<std::span<const std::byte>> decode_chunk(const ChunkCoding& coding,
         bytes = out;
         break;
       case Filter::shuffle:
+        if (i == 0) {
+          is_shuffled = true;
+          break;
+        }
         out.resize(bytes.size());
-        unshuffle(bytes, out, coding.element_bytes);
+        unshuffle_all(bytes, coding.element_bytes, out);
         bytes = out;
         break;
     }
@@ -159,7 +179,7 @@ Expected<std::span<const std::byte>> decode_chunk(const ChunkCoding& coding,
     return failure(ErrorCode::damaged_file, fmt::format("a chunk decodes to {} bytes instead of {}",
                                                         bytes.size(), coding.decoded_bytes));
   }
-  return bytes;
+  return DecodedChunk{bytes, is_shuffled};
 }
 
 }  // namespace bentlight::archive

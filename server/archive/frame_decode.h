@@ -47,22 +47,32 @@ struct ChunkCoding {
 };
 
 /// The elements of one chunk, as stored elements (byte order and scale untouched).
+struct DecodedChunk {
+  std::span<const std::byte> bytes;
+  bool is_shuffled = false;  // byte k of all elements lies together; see unshuffle
+};
+
+/// Undoes the filters of one chunk, but for a shuffle that was the first to be applied: that one is best
+/// undone piece by piece where the elements are used, in cache.
 ///
 ///   shapes   the result lies in `stored` or in `scratch`, and holds as long as both do
 ///   needs    at most one deflate among the filters
 ///   errors   damaged_file when a stage yields another number of bytes than it must, or the checksum differs
-Expected<std::span<const std::byte>> decode_chunk(const ChunkCoding& coding,
-                                                  std::uint32_t filter_mask,
-                                                  std::span<const std::byte> stored,
-                                                  DecodeScratch& scratch);
+Expected<DecodedChunk> decode_chunk(const ChunkCoding& coding,
+                                    std::uint32_t filter_mask,
+                                    std::span<const std::byte> stored,
+                                    DecodeScratch& scratch);
 
 /// The Fletcher-32 checksum as HDF5 stores it: over big-endian words of 16 bits, both sums starting at zero.
 std::uint32_t fletcher32(std::span<const std::byte> bytes);
 
-/// Undoes the shuffle filter: byte k of every element lies together. Bytes beyond the last whole element
-/// stay.
+/// Undoes the shuffle filter, which puts byte k of every element together, for some elements of a chunk.
 ///
-///   shapes   in and out [bytes], not overlapping
-void unshuffle(std::span<const std::byte> in, std::span<std::byte> out, std::size_t element_bytes);
+///   shapes   shuffled [bytes of the chunk]; out [elements * element_bytes], not overlapping
+///   throws   std::invalid_argument when the elements are not among the chunk's
+void unshuffle(std::span<const std::byte> shuffled,
+               std::size_t element_bytes,
+               std::size_t first_element,
+               std::span<std::byte> out);
 
 }  // namespace bentlight::archive

@@ -24,6 +24,7 @@ class FrameReader {
   struct Scratch {
     std::vector<std::byte> stored;
     DecodeScratch decode;
+    std::vector<std::byte> elements;
     std::vector<RowSegment> segments;
     GatherState gather;
   };

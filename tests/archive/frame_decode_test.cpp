@@ -63,29 +63,50 @@ TEST(Fletcher32, AgreesWithItsDefinitionAtEveryLength) {
 }
 
 TEST(Unshuffle, PutsTheBytesOfAnElementTogether) {
-  const auto in = bytes_of({1, 2, 11, 12, 21, 22, 31, 32, 99});
-  std::vector<std::byte> out(in.size());
+  const auto shuffled = bytes_of({1, 2, 3, 11, 12, 13, 21, 22, 23, 31, 32, 33});
+  std::vector<std::byte> all(12), last_two(8);
 
-  unshuffle(in, out, 4);
+  unshuffle(shuffled, 4, 0, all);
+  unshuffle(shuffled, 4, 1, last_two);
 
-  EXPECT_EQ(out, bytes_of({1, 11, 21, 31, 2, 12, 22, 32, 99}));  // what is no whole element stays where it is
+  EXPECT_EQ(all, bytes_of({1, 11, 21, 31, 2, 12, 22, 32, 3, 13, 23, 33}));
+  EXPECT_EQ(last_two, bytes_of({2, 12, 22, 32, 3, 13, 23, 33}));
 }
 
-TEST(Unshuffle, UndoesShuffling) {
+TEST(Unshuffle, UndoesShufflingOfEverySize) {
   for (const std::size_t size : {2, 4, 8}) {
     const auto original = random_bytes(size * 777);
     std::vector<std::byte> shuffled(original.size()), out(original.size());
     for (std::size_t i = 0; i < original.size(); ++i) shuffled[i % size * 777 + i / size] = original[i];
 
-    unshuffle(shuffled, out, size);
+    unshuffle(shuffled, size, 0, out);
 
     EXPECT_EQ(out, original) << size;
   }
 }
 
-TEST(Unshuffle, RefusesAnElementSizeThatNoTypeHas) {
-  std::vector<std::byte> bytes(9);
-  EXPECT_THROW(unshuffle(bytes, bytes, 3), std::invalid_argument);
+TEST(Unshuffle, RefusesElementsThatAreNotThere) {
+  const std::vector<std::byte> shuffled(12);
+  std::vector<std::byte> out(8);
+  EXPECT_THROW(unshuffle(shuffled, 4, 2, out), std::invalid_argument);
+  EXPECT_THROW(unshuffle(shuffled, 4, SIZE_MAX, out), std::invalid_argument);
+  EXPECT_THROW(unshuffle(shuffled, 3, 0, out), std::invalid_argument);
+}
+
+// As nobody should but anybody may.
+TEST(DecodeChunk, UndoesAShuffleThatCameAfterAChecksum) {
+  constexpr std::array filters{Filter::fletcher32, Filter::shuffle};
+  DecodeScratch scratch;
+  // {1, 2, 3, 4} and its checksum by hand: 0x0102 + 0x0304 = 0x0406, 0x0102 + 0x0406 = 0x0508; a ninth byte
+  // is too many.
+  const auto shuffled = bytes_of({1, 0x06, 2, 0x04, 3, 0x08, 4, 0x05});
+
+  const auto decoded = decode_chunk({filters, 4, 4}, 0, shuffled, scratch);
+
+  ASSERT_TRUE(decoded) << decoded.error().text;
+  EXPECT_FALSE(decoded->is_shuffled);
+  EXPECT_TRUE(std::ranges::equal(decoded->bytes, bytes_of({1, 2, 3, 4})));
+  EXPECT_FALSE(decode_chunk({filters, 4, 4}, 0, bytes_of({1, 6, 2, 4, 3, 8, 4, 5, 9}), scratch));
 }
 
 // A zlib stream of one stored block (RFC 1950, RFC 1951 3.2.4): header 78 01, final stored block, length and
@@ -125,11 +146,11 @@ TEST(DecodeChunk, RefusesASizeThatTheChunkMayNotHave) {
   const auto plain_but_short = decode_chunk({filters, 1, 15}, 1, abc_stream, scratch);
 
   ASSERT_TRUE(fits);
-  EXPECT_EQ(fits->size(), 3);
+  EXPECT_EQ(fits->bytes.size(), 3);
   ASSERT_FALSE(short_of);
   EXPECT_EQ(short_of.error().code, ErrorCode::damaged_file);
   ASSERT_TRUE(plain);
-  EXPECT_EQ(plain->data(), abc_stream.data());
+  EXPECT_EQ(plain->bytes.data(), abc_stream.data());
   EXPECT_FALSE(plain_but_short);
 }
 

@@ -74,7 +74,9 @@ extern "C" int LLVMFuzzerTestOneInput(const std::uint8_t* data, std::size_t byte
   const auto decoded =
       archive::decode_chunk(coding, filter_mask, std::as_bytes(std::span(data + 8, bytes - 8)), scratch);
   if (!decoded) return 0;
-  if (decoded->size() != coding.decoded_bytes) std::abort();
-  gather_all(map, *decoded);
+  if (decoded->bytes.size() != coding.decoded_bytes) std::abort();
+  std::vector<std::byte> elements(decoded->bytes.begin(), decoded->bytes.end());
+  if (decoded->is_shuffled) archive::unshuffle(decoded->bytes, element_bytes, 0, elements);
+  gather_all(map, elements);
   return 0;
 }

@@ -23,7 +23,8 @@ export function refusalFace(error) {
 }
 
 function sentence(text) {
-  const capital = text.charAt(0).toUpperCase() + text.slice(1);
+  // A parameter at the beginning, as in aperture=900%, keeps its spelling.
+  const capital = /^\w+=/.test(text) ? text : text.charAt(0).toUpperCase() + text.slice(1);
   return /[.!?]$/.test(capital) ? capital : `${capital}.`;
 }
 

@@ -6,7 +6,7 @@
  *   campaign: ?string, run: ?string, view: ?string, show: ?string,
  *   from: ?string, to: ?string, first: ?string, last: ?string,
  *   aperture: ?string, obscuration: string, center: string, remove: string, mean_over: string, length_unit: string,
- *   field: string, quantity: string, zoom: ?[number, number], at: ?number,
+ *   field: string, quantity: string, zoom: ?[number, number], frame: ?number,
  *   frame_limit: ?number, mean_limit: ?number, rms_limits: ?[number, number], field_limits: ?[number, number]
  * }>} ViewState
  */
@@ -27,10 +27,10 @@ const kinds = {
     write: (value) => value,
     accepted: `one of ${choices.join(', ')}`,
   }),
-  number: {
-    read: (text) => (Number.isFinite(number(text)) ? number(text) : undefined),
+  wholeNumber: {
+    read: (text) => (/^\d{1,15}$/.test(text) ? Number(text) : undefined),
     write: String,
-    accepted: 'a number',
+    accepted: 'a whole number from 0',
   },
   positive: {
     read: (text) => (Number.isFinite(number(text)) && number(text) > 0 ? number(text) : undefined),
@@ -64,7 +64,7 @@ const fields = [
   { name: 'field', kind: kinds.text, standard: 'opd_rms_mean' },
   { name: 'quantity', kind: kinds.text, standard: 'opd_rms' },
   { name: 'zoom', kind: kinds.range },
-  { name: 'at', kind: kinds.number },
+  { name: 'frame', kind: kinds.wholeNumber },
   { name: 'frame_limit', kind: kinds.positive },
   { name: 'mean_limit', kind: kinds.positive },
   { name: 'rms_limits', kind: kinds.range },
@@ -149,13 +149,13 @@ export function isNewPlace(before, after) {
 
 /** State of a view chosen in `state`: preparation and quantity stay, what belongs to the old view's record goes. */
 export function withView(state, view) {
-  return changed(state, { view, show: null, zoom: null, at: null });
+  return changed(state, { view, show: null, zoom: null, frame: null });
 }
 
 /** State of a run chosen in `state`: what was prepared stays, but for a window, which belongs to one record. */
 export function withRun(state, run) {
   return changed(state, {
-    run, view: null, show: null, zoom: null, at: null, from: null, to: null, first: null, last: null,
+    run, view: null, show: null, zoom: null, frame: null, from: null, to: null, first: null, last: null,
     field_limits: null,
   });
 }

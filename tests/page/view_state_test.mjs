@@ -20,7 +20,7 @@ function someState(next) {
     campaign: pick(...texts), run: pick(...texts), view: pick(...texts), show: 'index',
     from: pick('0.01', '1e-3'), to: '0.5', first: '0', last: '99', aperture: pick('80%', '0.1'), obscuration: '0.3', center: '0.01,-0.02',
     remove: pick('none', 'modes:10', 'piston'), mean_over: 'window', length_unit: pick('nm', 'waves'), field: 'skewness',
-    quantity: pick('tip', 'signal:wall pressure'), zoom: range(), at: next() * 1e-3, frame_limit: next() + 0.1, mean_limit: 2, rms_limits: range(),
+    quantity: pick('tip', 'signal:wall pressure'), zoom: range(), frame: Math.floor(next() * 1e6), frame_limit: next() + 0.1, mean_limit: 2, rms_limits: range(),
     field_limits: range(),
   };
   return changed(emptyState, Object.fromEntries(Object.entries(changes).filter(() => next() < 0.5)));
@@ -52,29 +52,29 @@ test('commas and colons stay readable in the address', () => {
 });
 
 test('what the page does not know is said and not dropped silently', () => {
-  const { state, refused } = parseState('?view=v1&colour=red&at=soon&zoom=2..1&view=v2&show=everything');
+  const { state, refused } = parseState('?view=v1&colour=red&frame=soon&zoom=2..1&view=v2&show=everything');
 
   assert.equal(state.view, 'v1');
-  assert.deepEqual(refused.map(({ name }) => name), ['colour', 'at', 'zoom', 'view', 'show']);
+  assert.deepEqual(refused.map(({ name }) => name), ['colour', 'frame', 'zoom', 'view', 'show']);
   for (const { reason } of refused) assert.ok(reason.length > 0);
 });
 
 test('numbers that are not finite, and control characters, are refused', () => {
-  for (const query of ['at=Infinity', 'at=NaN', 'frame_limit=0', 'frame_limit=-1', 'at=1e999', 'view=a%00b', 'view=', `run=${'x'.repeat(201)}`, 'zoom=1', 'zoom=1..2..3']) {
+  for (const query of ['frame=-1', 'frame=1.5', 'frame_limit=Infinity', 'frame_limit=0', 'frame_limit=-1', 'frame_limit=1e999', 'view=a%00b', 'view=', `run=${'x'.repeat(201)}`, 'zoom=1', 'zoom=1..2..3']) {
     assert.equal(parseState(query).refused.length, 1, query);
   }
 });
 
 test('a preparation holds only what differs from the defaults of the service', () => {
-  const state = changed(emptyState, { aperture: '80%', remove: 'piston,tilt,mean', length_unit: 'nm', at: 1 });
+  const state = changed(emptyState, { aperture: '80%', remove: 'piston,tilt,mean', length_unit: 'nm', frame: 1 });
 
   assert.deepEqual(preparation(state), { aperture: '80%', length_unit: 'nm' });
 });
 
 test('choosing another view keeps the preparation and drops what belongs to the record', () => {
-  const state = withView(changed(emptyState, { run: 'r', view: 'a', remove: 'none', zoom: [0, 1], at: 0.5 }), 'b');
+  const state = withView(changed(emptyState, { run: 'r', view: 'a', remove: 'none', zoom: [0, 1], frame: 5 }), 'b');
 
-  assert.deepEqual([state.view, state.remove, state.zoom, state.at], ['b', 'none', null, null]);
+  assert.deepEqual([state.view, state.remove, state.zoom, state.frame], ['b', 'none', null, null]);
 });
 
 test('choosing another run leaves the view and its window', () => {
@@ -86,7 +86,7 @@ test('choosing another run leaves the view and its window', () => {
 test('subjects and preparations are places to come back to, adjustments are not', () => {
   assert.ok(isNewPlace(emptyState, changed(emptyState, { view: 'a' })));
   assert.ok(isNewPlace(emptyState, changed(emptyState, { remove: 'none' })));
-  assert.ok(!isNewPlace(emptyState, changed(emptyState, { zoom: [0, 1], at: 0.1, frame_limit: 1 })));
+  assert.ok(!isNewPlace(emptyState, changed(emptyState, { zoom: [0, 1], frame: 1, frame_limit: 1 })));
 });
 
 test('a name that the state does not have is a fault of the program', () => {

@@ -7,8 +7,8 @@ import { fieldThumbnail } from '../plots/field_map.js';
 import { extent, tightLimits } from '../plots/scales.js';
 import { createQuestion } from '../question.js';
 import { changed, emptyState, formatState, withRun } from '../view_state.js';
-import { fieldModel, readingText } from './field_model.js';
-import { raysPicture } from './rays.js';
+import { fieldModel, readingText } from './parts/field_model.js';
+import { raysPicture } from './parts/rays.js';
 
 const mostPictures = 24;  // each is a question over all views of a run
 

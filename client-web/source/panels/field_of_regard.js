@@ -11,7 +11,7 @@ import { paperPalette } from '../plots/palette.js';
 import { fieldQuantities, labelOf } from '../quantities.js';
 import { createQuestion } from '../question.js';
 import { preparation } from '../view_state.js';
-import { fieldModel, readingText } from './field_model.js';
+import { fieldModel, readingText } from './parts/field_model.js';
 
 /** The model's extremes as a sentence. */
 function findingOf(model, result) {

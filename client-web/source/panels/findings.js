@@ -5,7 +5,7 @@ import { intervalText, percentText, wholeText } from '../numbers.js';
 import { createQuestion } from '../question.js';
 import { unitMeaning, unitText } from '../units.js';
 import { removalText } from '../removal.js';
-import { statisticsPath } from './statistics_question.js';
+import { statisticsPath } from './parts/statistics_question.js';
 
 const shownValues = [
   { name: 'opd_rms_mean', title: 'OPD_rms, mean' },

@@ -94,43 +94,39 @@ export function mount(root, { api, go }) {
   }
 
   function drawAnswer(answer) {
-    const { arrays, provenance } = answer.result;
-    const [, rows, columns] = arrays.frames.shape;
-    look = { rows, columns, x: arrays.x.data, y: arrays.y.data, axisUnit: arrays.x.unit, unit: arrays.frames.unit };
-    const first = firstFrameOf(provenance, arrays.time.data[0]);
-    if (!covers(arrays.time.data[0])) {
-      autoLimit = block?.key === key() ? autoLimit : 0;
-      takeBlock({ key: key(), first, times: arrays.time.data, frames: Float32Array.from(arrays.frames.data, (value) => value ?? NaN), points: rows * columns });
+    const { frames, time, frame, x, y } = answer.result.arrays;
+    const [, rows, columns] = frames.shape;
+    look = { rows, columns, x: x.data, y: y.data, axisUnit: x.unit, unit: frames.unit };
+    if (!covers(frame.data[0])) {
+      if (block?.key !== key()) autoLimit = 0;
+      takeBlock({ key: key(), first: frame.data[0], times: time.data, frames: Float32Array.from(frames.data, (value) => value ?? NaN), points: rows * columns });
       position = 0;
     }
     drawWhole();
     figure.setWarnings(answer.result.warnings);
     figure.setOffer({
-      answer, what: `frame-${first}`, arrays: ['frames', 'time', 'x', 'y'],
+      answer, what: `frame-${frame.data[0]}`, arrays: ['frames', 'time', 'x', 'y'],
       table: () => mapTable({ name: 'opd', unit: look.unit, axisUnit: look.axisUnit, x: look.x, y: look.y, values: [...values()] }),
       drawing: () => {
         const { nodes, height } = mapNodes(model(), { width: 560, palette: paperPalette });
-        return { width: 560, height, nodes, title: `Wavefront ${label.textContent}`, palette: paperPalette };
+        return { width: 560, height, nodes, title: `Wavefront, ${label.textContent}`, palette: paperPalette };
       },
     });
   }
 
-  /** Number of the first frame of an answer: as the server resolved it, or by the rate when it does not say. */
-  function firstFrameOf(provenance, time) {
-    const said = provenance.preparation?.first ?? provenance.first;
-    return Number.isInteger(said) ? said : Math.round((time - (view.start_s ?? 0)) * view.frame_rate_hz);
+  /** True when the block in hand holds the frame of this number; then it becomes the position. */
+  function covers(number) {
+    if (!block || block.key !== key() || number < block.first || number >= block.first + block.times.length) return false;
+    position = number - block.first;
+    return true;
   }
 
-  /** True when the block in hand holds the frame nearest to `time`; then it becomes the position. */
-  function covers(time) {
-    if (!block || block.key !== key() || time === null) return false;
-    const slack = 0.51 / view.frame_rate_hz;
-    if (time < block.times[0] - slack || time > block.times[block.times.length - 1] + slack) return false;
-    let best = 0;
-    for (let i = 1; i < block.times.length; ++i) if (Math.abs(block.times[i] - time) < Math.abs(block.times[best] - time)) best = i;
-    if (Math.abs(block.times[best] - time) > slack) return false;
-    position = best;
-    return true;
+  /** The frame that the state asks for: its own, or the first of the window. */
+  function wantedFrame() {
+    if (state.frame !== null) return Math.min(view.frames - 1, state.frame);
+    if (state.first !== null) return Number(state.first) || 0;
+    const start = state.from === null ? 0 : Math.round((Number(state.from) - (view.start_s ?? 0)) * view.frame_rate_hz);
+    return Math.min(view.frames - 1, Math.max(0, start || 0));
   }
 
   const framesPerBlock = () => Math.max(2, Math.min(mostFrames, Math.floor(blockBytes / (4 * view.rows * view.columns))));
@@ -146,21 +142,22 @@ export function mount(root, { api, go }) {
     return { key: wantedKey, first, times: times.data, frames: Float32Array.from(frames.data), points: frames.shape[1] * frames.shape[2] };
   }
 
-  /** Asks for whole frames near a number that the block does not hold. */
+  /** Goes to a frame, with those about it in one reply when the block does not hold it. */
   async function goToFrame(number) {
     const bounded = Math.min(view.frames - 1, Math.max(0, number));
-    const inBlock = bounded - (block?.first ?? NaN);
-    if (block?.key === key() && inBlock >= 0 && inBlock < block.times.length) return go({ at: block.times[inBlock] }, { isPassing: true });
-    // Stepping back wants the frames before, stepping on those after.
-    const start = bounded < frameNumber() ? Math.max(0, bounded - framesPerBlock() + 1) : bounded;
-    try {
-      const next = await loadBlock(start);
-      if (next.key !== key()) return;
-      takeBlock(next);
-      go({ at: block.times[bounded - start] }, { isPassing: true });
-    } catch (error) {
-      if (error.name !== 'AbortError') showFailure();
+    if (!covers(bounded)) {
+      // Stepping back wants the frames before, stepping on those after.
+      const start = bounded < frameNumber() ? Math.max(0, bounded - framesPerBlock() + 1) : bounded;
+      try {
+        const next = await loadBlock(start);
+        if (next.key !== key()) return;
+        takeBlock(next);
+      } catch (error) {
+        if (error.name !== 'AbortError') showFailure();
+        return;
+      }
     }
+    go({ frame: bounded }, { isPassing: true });
   }
 
   const step = (by) => {
@@ -220,7 +217,7 @@ export function mount(root, { api, go }) {
         if (!isCurrent()) return;
         map.repaintValues(values());
         showPosition();
-        go({ at: block.times[position] }, { isPassing: true });
+        go({ frame: frameNumber() }, { isPassing: true });
         // What was late is not made up for by a rush.
         due = Math.max(due + 1000 / Number(speed.value), performance.now());
         await new Promise((resolve) => setTimeout(resolve, due - performance.now()));
@@ -244,11 +241,9 @@ export function mount(root, { api, go }) {
     slide();
   });
 
-  /** The frame of the state's instant, whole: with its warnings, its provenance and its address. */
+  /** The frame that the state asks for, whole: with its warnings, its provenance and its address. */
   function ask() {
-    const at = state.at === null ? { first: state.first ?? 0, last: state.first ?? 0 } : { at: state.at };
-    const start = state.at === null && state.from !== null ? { at: state.from } : at;
-    const path = address(api.viewPath(view.id, 'frames'), { ...start, ...frameParameters(state) });
+    const path = address(api.viewPath(view.id, 'frames'), { first: wantedFrame(), last: wantedFrame(), ...frameParameters(state) });
     question.put(path, (options) => api.answer(path, options), drawAnswer);
   }
   const askSoon = debounced(350, ask);
@@ -265,7 +260,7 @@ export function mount(root, { api, go }) {
       view = subject.view;
       slider.max = String(view.frames - 1);
       askSoon.cancel();
-      if (look && covers(state.at)) {
+      if (look && covers(wantedFrame())) {
         if (!isPlaying()) {
           drawWhole();
           askSoon();

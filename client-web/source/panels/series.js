@@ -25,6 +25,33 @@ function parametersOf(state, columns) {
   return parameters;
 }
 
+/**
+ * The columns of an answer: their instants, the number of the frame in the middle of each, how many frames there are, and
+ * how many lie in one column.
+ */
+function columnsOf({ arrays, provenance }) {
+  const { time, frame } = arrays;
+  const { first, last } = provenance.preparation;
+  const ends = [...frame.data.slice(1), last + 1];
+  return {
+    time: time.data,
+    middles: frame.data.map((start, i) => (start + ends[i] - 1) / 2),
+    frames: last - first + 1,
+    perColumn: (last - first + 1) / frame.data.length,
+  };
+}
+
+/** y at x along a rising line through points; null outside of them by more than the half of a step. */
+function interpolated(xs, ys, x) {
+  const last = xs.length - 1;
+  if (last < 1) return xs[0] === x ? ys[0] : null;
+  let k = xs.findIndex((value) => value >= x);
+  if (k === -1) k = last;
+  k = Math.max(1, k);
+  const share = (x - xs[k - 1]) / (xs[k] - xs[k - 1]);
+  return share < -0.5 || share > 1.5 ? null : ys[k - 1] + share * (ys[k] - ys[k - 1]);
+}
+
 const rounded = (value) => Number(value.toPrecision(8));
 
 export function mount(root, { api, go }) {
@@ -44,7 +71,7 @@ export function mount(root, { api, go }) {
     height: 250,
     label: 'Against time. Arrow keys read values, plus and minus zoom, 0 shows all, Enter shows the frame.',
     onCursor: (index) => figure.read(index === null ? null : readingAt(index)),
-    onPick: (time) => go({ at: rounded(time) }),
+    onPick: (time) => go({ frame: frameAt(time) }),
     onZoom: (range) => go({ zoom: range ? boundedZoom(range) : null }),
   });
   figure.setHint('Drag to zoom, double click for all of it; click to see the frame of that instant.');
@@ -83,14 +110,13 @@ export function mount(root, { api, go }) {
     latest = answer;
     const { time, low, high, mean } = answer.result.arrays;
     const label = labelOf(state.quantity);
-    const frames = answer.result.values.frames?.value ?? answer.result.provenance.frames ?? null;
-    const perColumn = frames ? frames / time.data.length : null;
-    const isThinned = perColumn === null ? low.data.some((value, i) => value !== high.data[i]) : perColumn > 1.01;
+    const { frames, perColumn } = columnsOf(answer.result);
+    const isThinned = perColumn > 1;
     model = {
       x: { values: Float64Array.from(time.data), title: `Time (${time.unit})`, bounds: recordRange() },
       y: { title: withUnit(label, mean.unit) },
-      curves: [{ name: isThinned ? 'mean' : label, values: gaps(mean.data) }],
-      bands: isThinned ? [{ name: 'least to greatest', low: gaps(low.data), high: gaps(high.data) }] : [],
+      curves: [{ name: isThinned ? 'mean' : label, values: mean.data }],
+      bands: isThinned ? [{ name: 'least to greatest', low: low.data, high: high.data }] : [],
       mark: markOf(),
     };
     plot.draw(model);
@@ -106,16 +132,25 @@ export function mount(root, { api, go }) {
     });
   }
 
-  /** The plotting library takes null for a gap, and NaN not. */
-  const gaps = (values) => values;
+  /** Where the frame that is looked at lies in time, when it lies in what is drawn. */
+  function markOf() {
+    if (state.frame === null || !latest) return null;
+    const { time, middles } = columnsOf(latest.result);
+    const x = interpolated(middles, time, state.frame);
+    return x === null ? null : { x, name: 'frame' };
+  }
 
-  const markOf = () => (state.at === null ? null : { x: state.at, name: 'frame' });
+  /** Number of the frame nearest to an instant of the plot. */
+  function frameAt(instant) {
+    const { time, middles } = columnsOf(latest.result);
+    const number = interpolated(time, middles, instant) ?? (instant < time[0] ? middles[0] : middles.at(-1));
+    return Math.min(view.frames - 1, Math.max(0, Math.round(number)));
+  }
 
   function findingOf(perColumn, time, frames) {
     const [start, end] = [time.data[0], time.data.at(-1)];
     const span = `${steppedText(start, (end - start) / 200)} to ${quantityText(steppedText(end, (end - start) / 200), time.unit)}`;
-    if (perColumn === null) return span;
-    if (perColumn <= 1.01) return `${wholeText(frames)} frames, every one drawn, ${span}.`;
+    if (perColumn <= 1) return `${wholeText(frames)} frames, every one drawn, ${span}.`;
     return `${wholeText(frames)} frames, about ${numberText(perColumn, 3)} to a column, ${span}. The band reaches from the least to the greatest.`;
   }
 

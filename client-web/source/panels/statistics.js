@@ -16,7 +16,7 @@ import { extent, symmetricLimits, tightLimits } from '../plots/scales.js';
 import { labelOf } from '../quantities.js';
 import { createQuestion } from '../question.js';
 import { quantityText, unitText, withUnit } from '../units.js';
-import { statisticsPath } from './statistics_question.js';
+import { statisticsPath } from './parts/statistics_question.js';
 
 /** A map of the aperture: one figure for the mean and one for the rms, which differ in what `kind` says. */
 function apertureMap(kind, go) {
@@ -166,13 +166,13 @@ function convergence() {
   };
 }
 
-function valueRow(name, value) {
+function valueRow(label, value) {
   const text = intervalText(value);
   const isWhole = Number.isInteger(value.value);
   const interval = text.low !== null && value.low !== null && value.low !== undefined
     ? `${text.low} to ${text.high}${value.level ? ` (${percentText(value.level)})` : ''}` : '';
   return element('tr', {},
-    element('th', { scope: 'row' }, labelOf(name)),
+    element('th', { scope: 'row' }, label),
     element('td', { title: plainNumber(value.value) }, isWhole ? wholeText(value.value) : text.value),
     element('td', {}, unitText(value.unit)),
     element('td', {}, interval));
@@ -185,17 +185,16 @@ function allValues() {
     figure,
     draw(answer) {
       const { values, arrays, warnings } = answer.result;
-      const rows = Object.entries(values).map(([name, value]) => valueRow(name, value));
-      const { percentile, percentiles } = arrays;
-      const shares = percentile && percentiles
-        ? percentile.data.map((share, i) => valueRow(`percentile_${share}`, { value: percentiles.data[i], unit: percentiles.unit })) : [];
-      shares.forEach((row, i) => (row.firstChild.textContent = `${statedText(percentile.data[i])}\u00a0% of frames below`));
+      const rows = Object.entries(values).map(([name, value]) => valueRow(labelOf(name), value));
+      const { percent, percentiles, percentiles_low: lows, percentiles_high: highs } = arrays;
+      const shares = (percent?.data ?? []).map((share, i) =>
+        valueRow(`${statedText(share)}\u00a0% of frames below`, { value: percentiles.data[i], low: lows?.data[i], high: highs?.data[i], unit: percentiles.unit }));
       figure.picture.replaceChildren(element('div', { class: 'value-tables' },
         valueTable('Values with their intervals', ['Value', 'Number', 'Unit', 'Interval'], rows),
-        shares.length ? valueTable('Percentiles of OPD_rms', ['OPD_rms', 'Number', 'Unit', ''], shares) : null));
+        shares.length ? valueTable('Percentiles of OPD_rms', ['OPD_rms', 'Number', 'Unit', 'Interval'], shares) : null));
       figure.setWarnings(warnings);
       figure.setOffer({
-        answer, what: 'values', arrays: percentiles ? ['percentile', 'percentiles'] : [],
+        answer, what: 'values', arrays: percentiles ? ['percent', 'percentiles'] : [],
         table: () => valuesTable(values),
         drawing: null,
       });

@@ -54,10 +54,6 @@ export function histogramNodes(model, { width, height, palette }) {
 export function histogram(root, { height, label, onCursor }) {
   const host = document.createElement('div');
   host.className = 'histogram';
-  host.tabIndex = 0;
-  host.setAttribute('role', 'slider');
-  host.setAttribute('aria-label', label);
-  host.setAttribute('aria-valuemin', '0');
   root.append(host);
 
   /** @type {?HistogramModel} */
@@ -80,6 +76,10 @@ export function histogram(root, { height, label, onCursor }) {
   function showCursor() {
     host.querySelector('.bar.is-current')?.classList.remove('is-current');
     if (cursor !== null) host.querySelector(`.bar[data-bin="${cursor}"]`)?.classList.add('is-current');
+    host.tabIndex = 0;
+    host.setAttribute('role', 'slider');
+    host.setAttribute('aria-label', label);
+    host.setAttribute('aria-valuemin', '0');
     host.setAttribute('aria-valuemax', String(model.count.length - 1));
     host.setAttribute('aria-valuenow', String(cursor ?? 0));
     host.setAttribute('aria-valuetext', `bin ${cursor ?? 0} of ${model.count.length}`);

@@ -53,9 +53,6 @@ function seriesOf(model, palette) {
 export function linePlot(root, { height, label, onCursor, onPick = null, onZoom = null }) {
   const host = document.createElement('div');
   host.className = 'line-plot';
-  host.tabIndex = 0;
-  host.setAttribute('role', 'slider');
-  host.setAttribute('aria-label', label);
   // The name of y stands above the plot, where it is read without turning one's head.
   const yTitle = document.createElement('p');
   yTitle.className = 'axis-title';
@@ -120,6 +117,10 @@ export function linePlot(root, { height, label, onCursor, onPick = null, onZoom 
       host,
     );
     listenForClicks(plot.over);
+    // Before there are data there is nothing to walk along.
+    host.tabIndex = 0;
+    host.setAttribute('role', 'slider');
+    host.setAttribute('aria-label', label);
     host.setAttribute('aria-valuemin', '0');
     host.setAttribute('aria-valuemax', String(last()));
     host.setAttribute('aria-valuenow', String(cursor ?? 0));

@@ -67,14 +67,14 @@ function statistics(view) {
     {
       opd_rms_mean: { value: mean, unit: 'um', low: mean * 0.96, high: mean * 1.04, level: 0.95 }, opd_rms_std: { value: mean * 0.21, unit: 'um' },
       opd_rms_overall: { value: mean * 1.02, unit: 'um' }, effective_samples: { value: 142.7, unit: '1' }, skewness: { value: 0.71, unit: '1' },
-      kurtosis: { value: 3.9, unit: '1' }, lognormal_mu: { value: Math.log(mean), unit: '1' }, lognormal_sigma: { value: 0.22, unit: '1' },
+      kurtosis: { value: 3.9, unit: '1' }, lognormal_median: { value: mean, unit: 'um' }, lognormal_sigma: { value: 0.22, unit: '1' },
       lognormal_ks_distance: { value: 0.018, unit: '1' }, frames: { value: frames, unit: '1' },
     },
     {
       x: array(axis, 'm', ['x']), y: array(axis, 'm', ['y']),
       mean_map: array(mapOf((x, y) => mean * 4 * (2 * (x * x + y * y) / 0.0056 - 1 + 9 * x)), 'um', ['y', 'x'], [grid, grid]),
       rms_map: array(mapOf((x, y) => mean * (0.75 + 60 * (x + 0.02) ** 2 + 40 * y * y)), 'um', ['y', 'x'], [grid, grid]),
-      percentile: array([5, 25, 50, 75, 95], '%', ['percentile']), percentiles: array([0.7, 0.85, 0.98, 1.12, 1.4].map((k) => k * mean), 'um', ['percentile']),
+      percent: array([5, 25, 50, 75, 95], '%', ['percent']), percentiles: array([0.7, 0.85, 0.98, 1.12, 1.4].map((k) => k * mean), 'um', ['percent']),
       histogram_low: array(edges.slice(0, -1), 'um', ['histogram_low']), histogram_high: array(edges.slice(1), 'um', ['histogram_low']),
       histogram_count: array(count, '1', ['histogram_low']), lognormal_count: array(fit, '1', ['histogram_low']),
       convergence_frames: array(steps, '1', ['convergence_frames']), convergence_mean: array(wander, 'um', ['convergence_frames']),
@@ -89,10 +89,11 @@ function series(view, query) {
   const random = noise(7), mean = strength(view);
   const time = Array.from({ length: count }, (_, i) => from + ((to - from) * (i + 0.5)) / count);
   const middle = time.map((t) => mean * (1 + 0.25 * Math.sin(900 * t) + 0.2 * Math.sin(3217 * t) + 0.3 * random()));
-  return result('series', view.id, { frames: { value: Math.round((to - from) * rate), unit: '1' } }, {
-    time: array(time, 's', ['time']), mean: array(middle, 'um', ['time']),
+  const first = Math.round(from * rate), last = Math.round(to * rate);
+  return result('series', view.id, {}, {
+    time: array(time, 's', ['time']), frame: array(time.map((_, i) => first + Math.floor((i * (last - first + 1)) / count)), 'frames', ['time']), mean: array(middle, 'um', ['time']),
     low: array(middle.map((value) => value * (0.86 - 0.06 * random())), 'um', ['time']), high: array(middle.map((value) => value * (1.16 + 0.1 * random())), 'um', ['time']),
-  });
+  }, { provenance: { preparation: { first, last } } });
 }
 
 const frameOf = (view, k) => mapOf((x, y) => strength(view) * 1.4 * Math.cos(80 * (x - k * 0.0024) + 2 * y) * Math.exp(-y * y * 90) + strength(view) * 0.6 * Math.sin(60 * y - 40 * (x - k * 0.0021)));
@@ -108,9 +109,7 @@ function npy(data, shape, kind) {
 }
 
 function framesReply(view, query) {
-  const at = query.get('at');
-  const first = at === null ? Number(query.get('first') ?? 0) : Math.round(Number(at) * rate);
-  const last = at === null ? Number(query.get('last') ?? first) : first;
+  const first = Number(query.get('first') ?? 0), last = Number(query.get('last') ?? first);
   const count = last - first + 1;
   const time = Array.from({ length: count }, (_, i) => (first + i) / rate);
   if (query.get('format') === 'npy') {
@@ -121,7 +120,7 @@ function framesReply(view, query) {
   }
   return result('frames', view.id, {}, {
     frames: array(time.flatMap((_, i) => frameOf(view, first + i)), 'um', ['time', 'y', 'x'], [count, grid, grid]),
-    time: array(time, 's', ['time']), x: array(axis, 'm', ['x']), y: array(axis, 'm', ['y']),
+    time: array(time, 's', ['time']), frame: array(time.map((_, i) => first + i), 'frames', ['time']), x: array(axis, 'm', ['x']), y: array(axis, 'm', ['y']),
   }, { provenance: { preparation: { first, last } } });
 }
 

@@ -1,11 +1,11 @@
 // From a field-of-regard result to what the map draws.
 
-import { intervalText, numberText } from '../numbers.js';
-import { sequential } from '../plots/colour_maps.js';
-import { tightLimits } from '../plots/scales.js';
-import { angleText, labelOf } from '../quantities.js';
-import { quantityText, unitText } from '../units.js';
-import { formatState, withView } from '../view_state.js';
+import { intervalText, numberText } from '../../numbers.js';
+import { sequential } from '../../plots/colour_maps.js';
+import { tightLimits } from '../../plots/scales.js';
+import { angleText, labelOf } from '../../quantities.js';
+import { quantityText, unitText } from '../../units.js';
+import { formatState, withView } from '../../view_state.js';
 
 /** What a view's value reads as, with its interval when there is one. */
 export function readingText(value, low, high, unit) {
@@ -16,9 +16,9 @@ export function readingText(value, low, high, unit) {
 }
 
 /**
- * @param {import('../api.js').Result} result
- * @param {{state: import('../view_state.js').ViewState, checks: Map<string, object[]>}} given  checks by view
- * @returns {import('../plots/field_map.js').FieldModel & {unit: string}}
+ * @param {import('../../api.js').Result} result
+ * @param {{state: import('../../view_state.js').ViewState, checks: Map<string, object[]>}} given  checks by view
+ * @returns {import('../../plots/field_map.js').FieldModel & {unit: string}}
  */
 export function fieldModel(result, { state, checks }) {
   const { azimuth, elevation, value, low, high } = result.arrays;

@@ -1,6 +1,6 @@
 // The picture at the opening: plane wavefronts whose rays are bent on their way. An ornament, drawn once.
 
-import { svg, toElement } from '../plots/svg_tree.js';
+import { svg, toElement } from '../../plots/svg_tree.js';
 
 const rays = 13, width = 560, height = 120;
 

@@ -20,7 +20,7 @@ namespace bentlight::probe {
 
 namespace {
 
-// The sanitizers reserve terabytes of addresses and look at their own process.
+// The sanitizers reserve terabytes of addresses, and try with a pipe whether an address can be read.
 #if defined(__SANITIZE_ADDRESS__) || defined(__SANITIZE_THREAD__)
 constexpr bool is_sanitized = true;
 #else
@@ -41,7 +41,8 @@ Expected<void> limit_resources() {
   const auto seconds = static_cast<rlim_t>(limits::probe_seconds.count());
   for (const auto& [resource, limit] :
        {Limit{RLIMIT_CPU, seconds}, Limit{RLIMIT_FSIZE, 0}, Limit{RLIMIT_CORE, 0},
-        Limit{RLIMIT_NOFILE, archive::probe_file_descriptor + 1}, Limit{RLIMIT_NPROC, 0}}) {
+        Limit{RLIMIT_NOFILE, is_sanitized ? 64 : archive::probe_file_descriptor + 1},
+        Limit{RLIMIT_NPROC, 0}}) {
     if (auto set = limited(resource, limit); !set) return set;
   }
   if (is_sanitized) return {};
@@ -88,6 +89,8 @@ Expected<void> filter_calls() {
   if (!filter) return failure(ErrorCode::internal, "the system call filter cannot be made", "cage");
   int failed = 0;
   for (const int call : allowed_calls) failed |= ::seccomp_rule_add(filter.get(), SCMP_ACT_ALLOW, call, 0);
+  if (is_sanitized) failed |= ::seccomp_rule_add(filter.get(), SCMP_ACT_ALLOW, SCMP_SYS(pipe2), 0);
+  if (is_sanitized) failed |= ::seccomp_rule_add(filter.get(), SCMP_ACT_ALLOW, SCMP_SYS(pipe), 0);
   // Memory, but none that can be run.
   for (const int call : {SCMP_SYS(mmap), SCMP_SYS(mprotect)}) {
     failed |=

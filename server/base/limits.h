@@ -45,4 +45,8 @@ inline constexpr std::size_t page_items = 500;
 inline constexpr std::size_t summary_modes = 36;
 inline constexpr std::size_t summary_block_frames = 128;
 
+// Indexing goes over a view's frames twice, and keeps them in memory in between as far as this goes: a view of 20,000
+// frames of 128 x 128 points is read and inflated once.
+inline constexpr std::size_t index_memory_bytes = 1 * gibi;
+
 }  // namespace bentlight::limits

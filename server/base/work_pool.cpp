@@ -7,9 +7,14 @@
 
 namespace bentlight {
 
-WorkPool::WorkPool(std::size_t threads) {
+WorkPool::WorkPool(std::size_t threads, const std::function<void()>& on_start) {
   workers_.reserve(threads);
-  for (std::size_t i = 0; i < threads; ++i) workers_.emplace_back([this] { work(); });
+  for (std::size_t i = 0; i < threads; ++i) {
+    workers_.emplace_back([this, on_start] {
+      if (on_start) on_start();
+      work();
+    });
+  }
 }
 
 WorkPool::~WorkPool() {

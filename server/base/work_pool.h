@@ -19,7 +19,8 @@ namespace bentlight {
 ///   threads  safe from any thread; tasks must not wait for tasks behind them (for_each does not)
 class WorkPool {
  public:
-  explicit WorkPool(std::size_t threads);
+  /// `on_start` runs in each worker before its first task, to set its priority for example.
+  explicit WorkPool(std::size_t threads, const std::function<void()>& on_start = {});
   ~WorkPool();  // finishes what is queued
   WorkPool(const WorkPool&) = delete;
   WorkPool& operator=(const WorkPool&) = delete;

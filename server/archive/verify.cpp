@@ -152,6 +152,11 @@ Expected<void> verify_chunk(const FrameMap& map,
     return failure(ErrorCode::damaged_file,
                    fmt::format("chunk {} has {} bytes instead of {}", number, chunk.bytes, decoded_bytes));
   }
+  // Filters may add a little to what they cannot compress; more than this is no chunk but a claim on memory.
+  if (chunk.bytes > 2 * decoded_bytes + 64 * limits::kibi) {
+    return failure(ErrorCode::damaged_file, fmt::format("chunk {} has {} stored bytes for {} decoded", number,
+                                                        chunk.bytes, decoded_bytes));
+  }
   return {};
 }
 

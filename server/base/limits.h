@@ -15,17 +15,17 @@ inline constexpr std::size_t gibi = 1024 * mebi;
 // fits a piece; 2^40 frames would overflow no product of 64 bits.
 inline constexpr std::uint64_t grid_points = 4096 * 4096;
 inline constexpr std::uint64_t frames = std::uint64_t{1} << 40;
-inline constexpr std::uint64_t chunks = 16'000'000;         // 256 MiB of chunk table
+inline constexpr std::uint64_t chunks = 4'000'000;          // 64 MiB of chunk table; the probe holds some copies
 inline constexpr std::uint64_t chunk_bytes = 256 * mebi;    // decoded; a worker holds one
 inline constexpr std::size_t attribute_text_bytes = 64 * kibi;
 inline constexpr std::size_t signals = 256;
-inline constexpr std::uint64_t time_stamps = 32'000'000;    // 256 MiB of doubles, held while a view is read
+inline constexpr std::uint64_t time_stamps = 16'000'000;    // 128 MiB of doubles, likewise
 inline constexpr std::size_t filters = 8;                   // of one pipeline; three are known
 
 // The probe: a foreign file's parser gets this much and no more.
 inline constexpr std::size_t probe_memory_bytes = 1 * gibi;
 inline constexpr std::chrono::seconds probe_seconds{60};
-inline constexpr std::size_t probe_reply_bytes = 640 * mebi;  // the longest chunk table, times and signals
+inline constexpr std::size_t probe_reply_bytes = 384 * mebi;  // the longest chunk table, times and signals
 inline constexpr std::size_t tree_objects = 10'000;           // described to a person
 inline constexpr std::size_t tree_depth = 32;
 

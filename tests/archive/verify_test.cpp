@@ -77,6 +77,11 @@ const Fault faults[] = {
      [](auto& f) { f.map.chunks[1].offset = most - 10; }},
     {"a plain chunk of other size", ErrorCode::damaged_file,
      [](auto& f) { f.map.chunks[0].filter_mask = 3; }},
+    {"a chunk far longer than its elements", ErrorCode::damaged_file,
+     [](auto& f) {
+       f.identity.stamp.size_bytes = 1'000'000;
+       f.map.chunks[0].bytes = 500'000;
+     }},
     {"deflated twice", ErrorCode::unsupported_storage,
      [](auto& f) {
        f.map.filters = {Filter::deflate, Filter::deflate};

@@ -3,7 +3,8 @@
 
     make_wavefront_files.py FOLDER [NAME…]
 
-With names, only those are written. Beside each readable NAME.h5 lies NAME.npy: what NumPy makes of it, in metres, float64 [frames, rows, columns].
+With names, only those are written. Beside each readable NAME.h5 lies NAME.npy: what NumPy makes of it, in metres,
+float64 [frames, rows, columns].
 manifest.json lists {"name", "layout": what differs from the default, "refused": code, "says": part of the text}.
 """
 

@@ -40,14 +40,15 @@ export function mapTable({ name, unit, axisUnit, x, y, values }) {
 
 /** A picture with its title on top and where it came from beneath. @param {Drawing} drawing @param {string[]} lines */
 export function svgDocument(drawing, lines) {
-  const { width, height, nodes, title, palette } = drawing;
+  const { height, nodes, title, palette } = drawing;
+  const side = 10, width = drawing.width + 2 * side;
   const head = 34, foot = 14 * Math.min(lines.length, 3) + 14;
   const whole = head + height + foot;
   const text = (y, size, fill, content) => ({ name: 'text', attributes: { x: 12, y, 'font-size': size, fill }, children: [content] });
   const children = [
     { name: 'rect', attributes: { width, height: whole, fill: palette.sheet }, children: [] },
     text(22, 14, palette.ink, fitting(title, width, 7)),
-    { name: 'g', attributes: { transform: `translate(0 ${head})` }, children: nodes.flat(Infinity).filter(Boolean) },
+    { name: 'g', attributes: { transform: `translate(${side} ${head})` }, children: nodes.flat(Infinity).filter(Boolean) },
     ...lines.slice(0, 3).map((line, i) => text(head + height + 14 * (i + 1), 9, palette.soft, fitting(line, width, 4.6))),
   ];
   return { text: toDocument(width, whole, children, { title, lines }), width, height: whole };

@@ -73,6 +73,7 @@ export function mount(root, { api, go }) {
     onCursor: (index) => figure.read(index === null ? null : readingAt(index)),
     onPick: (time) => go({ frame: frameAt(time) }),
     onZoom: (range) => go({ zoom: range ? boundedZoom(range) : null }),
+    zoomRange: () => state.zoom ?? recordRange(),
   });
   figure.setHint('Drag to zoom, double click for all of it; click to see the frame of that instant.');
   const question = createQuestion(api, figure);

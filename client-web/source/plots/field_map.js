@@ -82,7 +82,7 @@ function surroundings(model, layout, palette, id) {
   const outside = model.views.map(({ value }) => value).filter((value) => value !== null);
   return [
     leftAxis(box, ys, ticksFor(ys.domain, box.bottom - box.top, 32), 'elevation (°)', palette),
-    bottomAxis(box, xs, ticksFor(xs.domain, box.right - box.left, 48), 'azimuth (°)', palette),
+    bottomAxis(box, xs, ticksFor(xs.domain, box.right - box.left, 42), 'azimuth (°)', palette),
     colourBar(
       { x: box.right + 14, top: box.top, bottom: box.bottom },
       {

@@ -47,10 +47,11 @@ function seriesOf(model, palette) {
  * @param {HTMLElement} root  its width decides the plot's; it gets the keys
  * @param {{height: number, label: string,
  *          onCursor: (index: ?number, isByKey: boolean) => void,
- *          onPick?: (x: number) => void, onZoom?: (range: ?[number, number]) => void}} options
- *        onZoom gets null for "all of it"
+ *          onPick?: (x: number) => void, onZoom?: (range: ?[number, number]) => void,
+ *          zoomRange?: () => [number, number]}} options
+ *        onZoom gets null for "all of it"; zoomRange tells what is asked for by now, which may not be drawn yet
  */
-export function linePlot(root, { height, label, onCursor, onPick = null, onZoom = null }) {
+export function linePlot(root, { height, label, onCursor, onPick = null, onZoom = null, zoomRange = () => xRange(model) }) {
   const host = document.createElement('div');
   host.className = 'line-plot';
   // The name of y stands above the plot, where it is read without turning one's head.
@@ -166,7 +167,7 @@ export function linePlot(root, { height, label, onCursor, onPick = null, onZoom 
 
   const zoomBy = (factor) => {
     const bounds = model.x.bounds ?? xRange(model);
-    onZoom?.(zoomedRange(xRange(model), model.x.values[cursor ?? Math.floor(last() / 2)], factor, bounds));
+    onZoom?.(zoomedRange(zoomRange(), model.x.values[cursor ?? Math.floor(last() / 2)], factor, bounds));
   };
 
   const keys = {

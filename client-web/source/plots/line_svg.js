@@ -68,7 +68,7 @@ function legendNodes(model, box, palette) {
   let x = box.right;
   // Laid out from the right by a rough width of the text; the file has no means to measure it.
   return entries.reverse().map(({ name, dash, colour, isBand }) => {
-    x -= name.length * 6.2 + 34;
+    x -= name.length * 6.6 + 46;
     return svg(
       'g', { transform: `translate(${x.toFixed(0)} 14)`, fill: palette.soft },
       isBand

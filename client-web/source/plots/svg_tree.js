@@ -6,7 +6,7 @@ const namespace = 'http://www.w3.org/2000/svg';
 
 /** @returns {SvgNode} */
 export function svg(name, attributes = {}, ...children) {
-  return { name, attributes, children: children.flat(Infinity).filter((child) => child !== null && child !== false) };
+  return { name, attributes, children: children.flat(Infinity).filter((child) => child !== null && child !== undefined && child !== false) };
 }
 
 /** A living element; `on` of the attributes holds listeners. */

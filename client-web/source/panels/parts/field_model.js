@@ -1,6 +1,6 @@
 // From a field-of-regard result to what the map draws.
 
-import { intervalText, numberText } from '../../numbers.js';
+import { intervalText } from '../../numbers.js';
 import { sequential } from '../../plots/colour_maps.js';
 import { tightLimits } from '../../plots/scales.js';
 import { angleText, labelOf } from '../../quantities.js';
@@ -34,7 +34,8 @@ export function fieldModel(result, { state, checks }) {
       elevation: elevation.data[i],
       value: value.data[i],
       text: `${place}: ${reading}${flaws.length ? `; ${flaws.length === 1 ? 'a check' : `${flaws.length} checks`} to look at` : ''}`,
-      short: value.data[i] === null ? '–' : numberText(value.data[i], 3),
+      // The same digits as in the name, so that who says what they see is understood.
+      short: value.data[i] === null ? '–' : intervalText({ value: value.data[i], low: low?.data[i] ?? null, high: high?.data[i] ?? null }).value,
       href: `?${formatState(withView(state, id))}`,
       isFlawed: flaws.length > 0,
     };

@@ -9,7 +9,6 @@
 #include <stdexcept>
 #include <vector>
 
-#include "base/limits.h"
 #include "base/text.h"
 
 namespace bentlight::query {
@@ -88,21 +87,31 @@ double quality_of(Encoding encoding, const std::vector<MediaRange>& ranges) {
   return quality;
 }
 
-Expected<void> check_size(const Result& result, Encoding encoding) {
-  std::size_t bytes = 0;
+/// Whether an array's numbers go into the reply.
+bool is_encoded(const Array& array, Encoding encoding, const EncodeOptions& options) {
+  if (!options.array.empty()) return array.name == options.array;
+  return encoding != Encoding::csv || array.shape.size() <= 1;
+}
+
+std::size_t bytes_at_most(const Array& array, Encoding encoding) {
+  const bool is_float = std::holds_alternative<std::vector<float>>(array.data);
   const bool is_text = encoding == Encoding::json || encoding == Encoding::csv;
+  const std::size_t each = is_text ? (is_float ? float_text_bytes : double_text_bytes)
+                                   : (is_float ? sizeof(float) : sizeof(double));
+  return element_count(array) * each;
+}
+
+Expected<void> check_size(const Result& result, Encoding encoding, const EncodeOptions& options) {
+  std::size_t bytes = 0;
   for (const Array& array : result.arrays) {
-    const bool is_float = std::holds_alternative<std::vector<float>>(array.data);
-    const std::size_t each = is_text ? (is_float ? float_text_bytes : double_text_bytes) : (is_float ? 4 : 8);
-    bytes += element_count(array) * each;
+    if (is_encoded(array, encoding, options)) bytes += bytes_at_most(array, encoding);
   }
-  if (bytes <= limits::result_bytes) return {};
-  return failure(
-      ErrorCode::too_large,
-      fmt::format("as {} this result may take {} bytes, more than the {} of one reply; ask for a shorter "
-                  "window, or for one array as npy",
-                  name(encoding), bytes, limits::result_bytes),
-      "format");
+  if (bytes <= options.limit_bytes) return {};
+  return failure(ErrorCode::too_large,
+                 fmt::format("as {} this result may take {} bytes, more than the {} of one reply; ask for a "
+                             "shorter window, or for one array as npy",
+                             name(encoding), bytes, options.limit_bytes),
+                 "format");
 }
 
 Expected<std::string> encoded_bytes(const Result& result, Encoding encoding, const std::string& array) {
@@ -185,7 +194,7 @@ Expected<Encoded> encode(const Result& result, Encoding encoding, const EncodeOp
         fmt::format("array={} goes with csv and npy; {} holds every array", options.array, name(encoding)),
         "array");
   }
-  if (const auto fits = check_size(result, encoding); !fits) return failure(fits);
+  if (const auto fits = check_size(result, encoding, options); !fits) return failure(fits);
   auto bytes = encoded_bytes(result, encoding, options.array);
   if (!bytes) return failure(bytes);
   std::string content_type(media_type(encoding));

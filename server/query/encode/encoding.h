@@ -1,12 +1,14 @@
 // Encodings: a result as the bytes of a reply. What each looks like stands in its own file beside this one.
 #pragma once
 
+#include <cstddef>
 #include <memory>
 #include <span>
 #include <string>
 #include <string_view>
 
 #include "base/error.h"
+#include "base/limits.h"
 #include "query/result.h"
 
 namespace bentlight::query {
@@ -35,6 +37,7 @@ Expected<Encoding> negotiated_encoding(std::string_view accept);
 
 struct EncodeOptions {
   std::string array = {};  // csv and npy: which array; empty where that is clear or not needed
+  std::size_t limit_bytes = limits::result_bytes;
 };
 
 /// A reply's body, shared between the cache and whoever is sending it.

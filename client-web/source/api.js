@@ -34,7 +34,10 @@ const pollMilliseconds = 1000;
 export function address(path, parameters = {}) {
   const query = Object.entries(parameters)
     .filter(([, value]) => value !== null && value !== undefined && value !== '')
-    .map(([name, value]) => `${name}=${encodeURIComponent(value).replace(/%(2C|3A)/g, (code) => decodeURIComponent(code))}`);
+    .map(
+      ([name, value]) =>
+        `${name}=${encodeURIComponent(value).replace(/%(2C|3A)/g, (code) => decodeURIComponent(code))}`,
+    );
   return query.length ? `${path}?${query.join('&')}` : path;
 }
 
@@ -79,7 +82,7 @@ async function json(path, options) {
 /** Items of a list, following `next` until `limit` of them are there. */
 async function items(path, { signal, limit = 20000 } = {}) {
   const all = [];
-  for (let next = path; next && all.length < limit; ) {
+  for (let next = path; next && all.length < limit;) {
     const { body } = await json(next, { signal });
     all.push(...body.items);
     next = body.next;
@@ -103,11 +106,14 @@ function finished(job, { signal, onProgress }) {
     const abort = () => stop(reject, new DOMException('superseded', 'AbortError'));
     const settle = (state) => {
       if (state.state === 'done') stop(resolve, state);
-      else if (state.state === 'failed') stop(reject, new ApiError(state.problem ?? { code: 'internal', detail: 'the work failed' }));
-      else if (state.state === 'cancelled') stop(reject, new ApiError({ code: 'cancelled', detail: 'the work was cancelled' }));
+      else if (state.state === 'failed')
+        stop(reject, new ApiError(state.problem ?? { code: 'internal', detail: 'the work failed' }));
+      else if (state.state === 'cancelled')
+        stop(reject, new ApiError({ code: 'cancelled', detail: 'the work was cancelled' }));
       else onProgress?.(state);
     };
-    const hear = (event) => settle({ ...JSON.parse(event.data), state: event.type === 'progress' ? 'running' : event.type });
+    const hear = (event) =>
+      settle({ ...JSON.parse(event.data), state: event.type === 'progress' ? 'running' : event.type });
     for (const name of ['progress', 'done', 'failed', 'cancelled']) source.addEventListener(name, hear);
     // A proxy may hold back events; the job's own address tells the same more slowly.
     const poll = async () => {
@@ -163,7 +169,7 @@ export function createApi() {
     if (before) return before;
     const entry = { controller: new AbortController(), waiting: 0, listeners: new Set(), job: null };
     entry.promise = askOnce(path, entry).finally(() => running.get(path) === entry && running.delete(path));
-    entry.promise.catch(() => {});  // everybody who waited may have left
+    entry.promise.catch(() => {}); // everybody who waited may have left
     running.set(path, entry);
     return entry;
   }

@@ -14,10 +14,18 @@ async function copy(text, status) {
 
 function block(name, text, status) {
   return element(
-    'section', { class: 'call-block' },
-    element('div', { class: 'call-head' },
+    'section',
+    { class: 'call-block' },
+    element(
+      'div',
+      { class: 'call-head' },
       element('h3', {}, name),
-      element('button', { type: 'button', 'aria-label': `Copy ${name}`, on: { click: () => copy(text, status) } }, 'Copy')),
+      element(
+        'button',
+        { type: 'button', 'aria-label': `Copy ${name}`, on: { click: () => copy(text, status) } },
+        'Copy',
+      ),
+    ),
     element('pre', { tabindex: 0, 'aria-label': name }, element('code', {}, text)),
   );
 }
@@ -28,7 +36,9 @@ export function openCall(offer, title) {
   const { result, path, digest } = offer.answer;
   const arrays = offer.arrays.map((name) => ({ name, dimensions: result.arrays[name]?.shape.length ?? 1 }));
   const status = element('p', { role: 'status', class: 'note' });
-  const blocks = callTexts({ url: new URL(path, location.href).href, arrays }).map(({ name, text }) => block(name, text, status));
+  const blocks = callTexts({ url: new URL(path, location.href).href, arrays }).map(({ name, text }) =>
+    block(name, text, status),
+  );
   if (digest) blocks.push(block('Permalink', new URL(`/v1/results/${digest}`, location.href).href, status));
   part(dialog, '.call-subject', 'call dialog').textContent = title;
   part(dialog, '.call-blocks', 'call dialog').replaceChildren(...blocks, status);

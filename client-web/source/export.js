@@ -28,28 +28,47 @@ export function csvText({ columns }, lines) {
 
 /** A map as columns y, x, value: the form every program can read. @returns {Table} */
 export function mapTable({ name, unit, axisUnit, x, y, values }) {
-  const ys = [], xs = [];
+  const ys = [],
+    xs = [];
   for (const yValue of y) {
     for (const xValue of x) {
       ys.push(yValue);
       xs.push(xValue);
     }
   }
-  return { columns: [{ name: 'y', unit: axisUnit, values: ys }, { name: 'x', unit: axisUnit, values: xs }, { name, unit, values }] };
+  return {
+    columns: [
+      { name: 'y', unit: axisUnit, values: ys },
+      { name: 'x', unit: axisUnit, values: xs },
+      { name, unit, values },
+    ],
+  };
 }
 
 /** A picture with its title on top and where it came from beneath. @param {Drawing} drawing @param {string[]} lines */
 export function svgDocument(drawing, lines) {
   const { height, nodes, title, palette } = drawing;
-  const side = 10, width = drawing.width + 2 * side;
-  const head = 34, foot = 14 * Math.min(lines.length, 3) + 14;
+  const side = 10,
+    width = drawing.width + 2 * side;
+  const head = 34,
+    foot = 14 * Math.min(lines.length, 3) + 14;
   const whole = head + height + foot;
-  const text = (y, size, fill, content) => ({ name: 'text', attributes: { x: 12, y, 'font-size': size, fill }, children: [content] });
+  const text = (y, size, fill, content) => ({
+    name: 'text',
+    attributes: { x: 12, y, 'font-size': size, fill },
+    children: [content],
+  });
   const children = [
     { name: 'rect', attributes: { width, height: whole, fill: palette.sheet }, children: [] },
     text(22, 14, palette.ink, fitting(title, width, 7)),
-    { name: 'g', attributes: { transform: `translate(${side} ${head})` }, children: nodes.flat(Infinity).filter(Boolean) },
-    ...lines.slice(0, 3).map((line, i) => text(head + height + 14 * (i + 1), 9, palette.soft, fitting(line, width, 4.6))),
+    {
+      name: 'g',
+      attributes: { transform: `translate(${side} ${head})` },
+      children: nodes.flat(Infinity).filter(Boolean),
+    },
+    ...lines
+      .slice(0, 3)
+      .map((line, i) => text(head + height + 14 * (i + 1), 9, palette.soft, fitting(line, width, 4.6))),
   ];
   return { text: toDocument(width, whole, children, { title, lines }), width, height: whole };
 }
@@ -74,7 +93,9 @@ export async function pngBlob({ text, width, height }, lines) {
     context.imageSmoothingEnabled = false;
     context.drawImage(image, 0, 0, canvas.width, canvas.height);
     const blob = await new Promise((resolve) => canvas.toBlob(resolve, 'image/png'));
-    return new Blob([withText(new Uint8Array(await blob.arrayBuffer()), 'Source', lines.join('\n'))], { type: 'image/png' });
+    return new Blob([withText(new Uint8Array(await blob.arrayBuffer()), 'Source', lines.join('\n'))], {
+      type: 'image/png',
+    });
   } finally {
     URL.revokeObjectURL(address);
   }
@@ -93,13 +114,22 @@ export function crc32(bytes) {
 /** A PNG with an iTXt chunk right after its header (ISO 15948, 11.3.4.5). @param {Uint8Array} png */
 export function withText(png, keyword, text) {
   const encode = new TextEncoder();
-  const body = new Uint8Array([...encode.encode('iTXt'), ...encode.encode(keyword), 0, 0, 0, 0, 0, ...encode.encode(text)]);
+  const body = new Uint8Array([
+    ...encode.encode('iTXt'),
+    ...encode.encode(keyword),
+    0,
+    0,
+    0,
+    0,
+    0,
+    ...encode.encode(text),
+  ]);
   const chunk = new Uint8Array(body.length + 8);
   const view = new DataView(chunk.buffer);
   view.setUint32(0, body.length - 4);
   chunk.set(body, 4);
   view.setUint32(4 + body.length, crc32(body));
-  const afterHeader = 33;  // signature 8, IHDR 25
+  const afterHeader = 33; // signature 8, IHDR 25
   const whole = new Uint8Array(png.length + chunk.length);
   whole.set(png.subarray(0, afterHeader));
   whole.set(chunk, afterHeader);
@@ -153,7 +183,10 @@ function octaveCall(url, arrays) {
 
 /** A name for a file: view, analysis and the beginning of the digest, in characters every system takes. */
 export function fileStem(subject, analysis, digest, what = '') {
-  return [subject, analysis, digest?.slice(0, 8), what].filter(Boolean).join('_').replace(/[^A-Za-z0-9._-]+/g, '-');
+  return [subject, analysis, digest?.slice(0, 8), what]
+    .filter(Boolean)
+    .join('_')
+    .replace(/[^A-Za-z0-9._-]+/g, '-');
 }
 
 /** Hands a file to the browser's own saving. @param {Blob} blob */

@@ -6,19 +6,37 @@ import { bytesText, waitText, wholeText } from './numbers.js';
 
 /** Nothing here: why, and what to do about it. */
 export function emptyFace(title, ...advice) {
-  return element('div', { class: 'face face-empty' }, element('p', { class: 'face-title' }, title), element('p', {}, advice));
+  return element(
+    'div',
+    { class: 'face face-empty' },
+    element('p', { class: 'face-title' }, title),
+    element('p', {}, advice),
+  );
 }
 
 /** Not possible: what the server said, about which parameter, and what it would accept. @param {import('./api.js').ApiError} error */
 export function refusalFace(error) {
   const isCancelled = error.code === 'cancelled';
   return element(
-    'div', { class: 'face face-refusal', role: 'alert', tabindex: -1 },
+    'div',
+    { class: 'face face-refusal', role: 'alert', tabindex: -1 },
     element('p', { class: 'face-title' }, isCancelled ? 'Cancelled' : 'Not possible'),
     element('p', {}, sentence(error.message)),
     error.parameter && element('p', {}, 'Parameter: ', element('code', {}, error.parameter)),
-    error.accepted.length > 0 && element('p', {}, 'Accepted: ', error.accepted.flatMap((each, i) => [i > 0 && ', ', element('code', {}, each)])),
-    element('p', { class: 'face-code' }, 'Code ', element('code', {}, error.code), error.status ? ` · status ${error.status}` : ''),
+    error.accepted.length > 0 &&
+      element(
+        'p',
+        {},
+        'Accepted: ',
+        error.accepted.flatMap((each, i) => [i > 0 && ', ', element('code', {}, each)]),
+      ),
+    element(
+      'p',
+      { class: 'face-code' },
+      'Code ',
+      element('code', {}, error.code),
+      error.status ? ` · status ${error.status}` : '',
+    ),
   );
 }
 
@@ -31,21 +49,31 @@ function sentence(text) {
 /** Connection lost: the old picture stays, greyed; when it is tried again. */
 export function lostFace(error, { seconds, hasOld, retry }) {
   return element(
-    'div', { class: 'face face-lost', role: 'status' },
+    'div',
+    { class: 'face face-lost', role: 'status' },
     element('p', { class: 'face-title' }, error.retryAfter ? 'The server is busy' : 'Connection lost'),
-    element('p', {}, `${sentence(error.message)} ${hasOld ? 'What stands below is the last answer. ' : ''}Trying again every ${seconds} s.`),
+    element(
+      'p',
+      {},
+      `${sentence(error.message)} ${hasOld ? 'What stands below is the last answer. ' : ''}Trying again every ${seconds} s.`,
+    ),
     element('button', { type: 'button', on: { click: retry } }, 'Try now'),
   );
 }
 
 /** Work going on, without knowing how much. */
 export function workingFace() {
-  return element('div', { class: 'face face-working', role: 'status' }, element('p', {}, 'Asking the server …'), element('progress', { 'aria-label': 'Asking the server' }));
+  return element(
+    'div',
+    { class: 'face face-working', role: 'status' },
+    element('p', {}, 'Asking the server …'),
+    element('progress', { 'aria-label': 'Asking the server' }),
+  );
 }
 
 function progressText(job) {
   const { done = job.bytes_read, total = job.bytes_total, seconds_left: left } = job;
-  const isOfViews = job.analysis === 'field-of-regard';  // it counts views, everything else bytes
+  const isOfViews = job.analysis === 'field-of-regard'; // it counts views, everything else bytes
   const parts = [];
   if (job.state === 'queued') parts.push('Waiting for its turn');
   else if (!(total > 0)) parts.push('Reading frames');
@@ -59,7 +87,11 @@ function progressText(job) {
 export function jobFace(cancel) {
   const text = element('p', {}, 'Reading frames');
   const bar = element('progress', { max: 1, value: 0, 'aria-label': 'Progress of reading frames' });
-  const button = element('button', { type: 'button', on: { click: () => ((button.disabled = true), cancel()) } }, 'Cancel');
+  const button = element(
+    'button',
+    { type: 'button', on: { click: () => ((button.disabled = true), cancel()) } },
+    'Cancel',
+  );
   const face = element('div', { class: 'face face-job' }, element('div', { role: 'status' }, text), bar, button);
   return {
     face,
@@ -72,5 +104,14 @@ export function jobFace(cancel) {
 
 /** Warnings of a result, at its plot. @param {{code: string, text: string}[]} warnings */
 export function warningItems(warnings) {
-  return warnings.map(({ code, text }) => element('li', {}, element('span', { class: 'warning-mark', 'aria-hidden': 'true' }), sentence(text), ' ', element('code', {}, code)));
+  return warnings.map(({ code, text }) =>
+    element(
+      'li',
+      {},
+      element('span', { class: 'warning-mark', 'aria-hidden': 'true' }),
+      sentence(text),
+      ' ',
+      element('code', {}, code),
+    ),
+  );
 }

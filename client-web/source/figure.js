@@ -9,7 +9,7 @@ import { warningItems } from './faces.js';
 import { numberText, plainNumber } from './numbers.js';
 import { withUnit } from './units.js';
 
-const mostCells = 4000;  // of a table on the page; the files hold everything
+const mostCells = 4000; // of a table on the page; the files hold everything
 
 /**
  * @typedef {{
@@ -29,8 +29,13 @@ export function createFigure({ name, title }) {
   const find = (selector) => part(root, selector, `figure ${name}`);
   root.dataset.name = name;
   find('.plot-title').textContent = title;
-  const picture = find('.picture'), readout = find('.readout'), faceHost = find('.face-host'), tools = find('.tools');
-  const numbers = find('.numbers'), numbersButton = find('.numbers-button'), save = find('.save');
+  const picture = find('.picture'),
+    readout = find('.readout'),
+    faceHost = find('.face-host'),
+    tools = find('.tools');
+  const numbers = find('.numbers'),
+    numbersButton = find('.numbers-button'),
+    save = find('.save');
   numbers.setAttribute('aria-label', `Numbers: ${title}`);
   /** @type {?Offer} */
   let offer = null;
@@ -46,13 +51,19 @@ export function createFigure({ name, title }) {
       ...(result.warnings ?? []).map((warning) => `warning ${warning.code}: ${warning.text}`),
     ];
   };
-  const stem = () => fileStem(offer.answer.result.subject, offer.answer.result.analysis, offer.answer.digest, offer.what);
+  const stem = () =>
+    fileStem(offer.answer.result.subject, offer.answer.result.analysis, offer.answer.digest, offer.what);
   const csv = () => csvText(offer.table(), lines());
 
   const actions = {
-    copy: () => navigator.clipboard.writeText(csv()).then(() => say('Copied as CSV.'), () => say('The browser did not allow copying.')),
+    copy: () =>
+      navigator.clipboard.writeText(csv()).then(
+        () => say('Copied as CSV.'),
+        () => say('The browser did not allow copying.'),
+      ),
     csv: () => saveFile(`${stem()}.csv`, new Blob([csv()], { type: 'text/csv' })),
-    svg: () => saveFile(`${stem()}.svg`, new Blob([svgDocument(offer.drawing(), lines()).text], { type: 'image/svg+xml' })),
+    svg: () =>
+      saveFile(`${stem()}.svg`, new Blob([svgDocument(offer.drawing(), lines()).text], { type: 'image/svg+xml' })),
     png: async () => saveFile(`${stem()}.png`, await pngBlob(svgDocument(offer.drawing(), lines()), lines())),
   };
   for (const button of root.querySelectorAll('[data-save]')) {
@@ -83,7 +94,9 @@ export function createFigure({ name, title }) {
       ...offer.arrays.map((array) => [`${array} as NPY`, { format: 'npy', array }]),
     ];
     part(save, '.links', 'figure').replaceChildren(
-      ...links.map(([text, extra]) => element('a', { href: address(base, { ...parameters, ...extra }), download: '' }, text)),
+      ...links.map(([text, extra]) =>
+        element('a', { href: address(base, { ...parameters, ...extra }), download: '' }, text),
+      ),
     );
   }
 
@@ -151,18 +164,46 @@ export function createFigure({ name, title }) {
 function tableElement({ columns }, title) {
   const rows = Math.max(0, ...columns.map(({ values }) => values.length));
   const shown = Math.min(rows, Math.floor(mostCells / columns.length));
-  const cell = (value) => (typeof value === 'string' ? value : value === null || !Number.isFinite(value) ? 'no value' : numberText(value, 5));
+  const cell = (value) =>
+    typeof value === 'string' ? value : value === null || !Number.isFinite(value) ? 'no value' : numberText(value, 5);
   const body = element('tbody');
   for (let row = 0; row < shown; ++row) {
-    body.append(element('tr', {}, columns.map(({ values }) => element('td', { title: typeof values[row] === 'number' ? plainNumber(values[row]) : null }, cell(values[row])))));
+    body.append(
+      element(
+        'tr',
+        {},
+        columns.map(({ values }) =>
+          element(
+            'td',
+            { title: typeof values[row] === 'number' ? plainNumber(values[row]) : null },
+            cell(values[row]),
+          ),
+        ),
+      ),
+    );
   }
-  const note = shown < rows ? element('p', { class: 'note' }, `The first ${shown} of ${rows} rows; the CSV holds all of them.`) : null;
+  const note =
+    shown < rows
+      ? element('p', { class: 'note' }, `The first ${shown} of ${rows} rows; the CSV holds all of them.`)
+      : null;
   return element(
-    'div', {},
-    element('table', {},
+    'div',
+    {},
+    element(
+      'table',
+      {},
       element('caption', { class: 'unseen' }, `Numbers of: ${title}`),
-      element('thead', {}, element('tr', {}, columns.map((column) => element('th', { scope: 'col' }, withUnit(column.name, column.unit))))),
-      body),
+      element(
+        'thead',
+        {},
+        element(
+          'tr',
+          {},
+          columns.map((column) => element('th', { scope: 'col' }, withUnit(column.name, column.unit))),
+        ),
+      ),
+      body,
+    ),
     note,
   );
 }

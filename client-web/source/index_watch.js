@@ -2,7 +2,8 @@
 
 import { countText, numberText } from './numbers.js';
 
-const busySeconds = 2, idleSeconds = 20;
+const busySeconds = 2,
+  idleSeconds = 20;
 
 function textOf(index) {
   if (index.state !== 'idle' && index.progress) {

@@ -8,7 +8,11 @@ import { element } from './dom.js';
  */
 export function limitControls({ name, go, isSymmetric }) {
   const low = element('input', { type: 'number', step: 'any', 'aria-label': 'Lower limit of the colours' });
-  const high = element('input', { type: 'number', step: 'any', 'aria-label': isSymmetric ? 'Limit of the colours, both ways from zero' : 'Upper limit of the colours' });
+  const high = element('input', {
+    type: 'number',
+    step: 'any',
+    'aria-label': isSymmetric ? 'Limit of the colours, both ways from zero' : 'Upper limit of the colours',
+  });
   const lock = element('input', { type: 'checkbox' });
   const note = element('span', { class: 'limit-note', role: 'status' });
 
@@ -30,10 +34,14 @@ export function limitControls({ name, go, isSymmetric }) {
     });
   }
   const root = element(
-    'span', { class: 'limits', role: 'group', 'aria-label': 'Limits of the colours' },
+    'span',
+    { class: 'limits', role: 'group', 'aria-label': 'Limits of the colours' },
     element('span', { class: 'limits-label' }, isSymmetric ? 'Limit ±' : 'Limits'),
-    isSymmetric ? null : low, isSymmetric ? null : element('span', { 'aria-hidden': 'true' }, 'to'), high,
-    element('label', { class: 'check' }, lock, element('span', {}, 'lock')), note,
+    isSymmetric ? null : low,
+    isSymmetric ? null : element('span', { 'aria-hidden': 'true' }, 'to'),
+    high,
+    element('label', { class: 'check' }, lock, element('span', {}, 'lock')),
+    note,
   );
   return {
     root,

@@ -87,7 +87,16 @@ function readAddress() {
 /** Plain clicks on our own links change the state; with a key held the browser does what it always does. */
 document.addEventListener('click', (event) => {
   const link = event.target.closest('a[href^="?"], a[href="./"]');
-  if (!link || event.defaultPrevented || event.button !== 0 || event.metaKey || event.ctrlKey || event.shiftKey || event.altKey) return;
+  if (
+    !link ||
+    event.defaultPrevented ||
+    event.button !== 0 ||
+    event.metaKey ||
+    event.ctrlKey ||
+    event.shiftKey ||
+    event.altKey
+  )
+    return;
   event.preventDefault();
   const href = link.getAttribute('href');
   moveTo(parseState(href.startsWith('?') ? href : '').state);
@@ -97,8 +106,11 @@ document.addEventListener('click', (event) => {
 
 function sayRefused(refused) {
   shell.notice.hidden = refused.length === 0;
-  shell.notice.replaceChildren(...refused.map(({ name, text, reason }) =>
-    element('p', {}, 'Left aside from the address: ', element('code', {}, `${name}=${text}`), `, as ${reason}.`)));
+  shell.notice.replaceChildren(
+    ...refused.map(({ name, text, reason }) =>
+      element('p', {}, 'Left aside from the address: ', element('code', {}, `${name}=${text}`), `, as ${reason}.`),
+    ),
+  );
 }
 
 /** Puts the stage's panels in their order, keeping those that stay. */
@@ -140,7 +152,11 @@ async function loadSubject() {
   loading = new AbortController();
   const { signal } = loading;
   if (state.show) return { run: null, view: null };
-  const view = state.view ? (subject.view?.id === state.view ? subject.view : await api.view(state.view, { signal })) : null;
+  const view = state.view
+    ? subject.view?.id === state.view
+      ? subject.view
+      : await api.view(state.view, { signal })
+    : null;
   const runId = view?.run ?? state.run;
   const run = runId ? (subject.run?.id === runId ? subject.run : await api.run(runId, { signal })) : null;
   return { run, view };
@@ -176,7 +192,10 @@ async function show({ isNewSubject = false } = {}) {
 /** The subject itself is not there, or cannot be asked for. */
 function showFailure(error) {
   const again = () => show();
-  const face = error instanceof ApiError ? refusalFace(error) : lostFace(error, { seconds: 5, hasOld: mounted.size > 0, retry: again });
+  const face =
+    error instanceof ApiError
+      ? refusalFace(error)
+      : lostFace(error, { seconds: 5, hasOld: mounted.size > 0, retry: again });
   part(document, '#failure', 'main').replaceChildren(face);
   if (error instanceof ApiError) {
     shell.main.hidden = true;
@@ -191,12 +210,22 @@ function showFailure(error) {
 function nameThePlace(stage) {
   const { run, view } = subject;
   const steps = [];
-  if (run?.campaign) steps.push([run.campaign_name ?? run.campaign, changed(parseState('').state, { campaign: run.campaign })]);
+  if (run?.campaign)
+    steps.push([run.campaign_name ?? run.campaign, changed(parseState('').state, { campaign: run.campaign })]);
   if (run) steps.push([run.name ?? run.id, withRun(state, run.id)]);
   if (view) steps.push([angleText(view), state]);
   if (stage === 'index') steps.push(['Index', state]);
-  shell.trail.replaceChildren(...steps.map(([text, target], i) =>
-    element('li', {}, i === steps.length - 1 ? element('span', { 'aria-current': 'page' }, text) : element('a', { href: `?${formatState(target)}` }, text))));
+  shell.trail.replaceChildren(
+    ...steps.map(([text, target], i) =>
+      element(
+        'li',
+        {},
+        i === steps.length - 1
+          ? element('span', { 'aria-current': 'page' }, text)
+          : element('a', { href: `?${formatState(target)}` }, text),
+      ),
+    ),
+  );
   document.title = [...steps.map(([text]) => text).reverse(), 'Bentlight'].join(' · ');
 }
 
@@ -207,7 +236,8 @@ addEventListener('refusal', (event) => {
 });
 
 document.addEventListener('click', (event) => {
-  for (const menu of document.querySelectorAll('details.menu[open]')) if (!menu.contains(event.target)) menu.open = false;
+  for (const menu of document.querySelectorAll('details.menu[open]'))
+    if (!menu.contains(event.target)) menu.open = false;
 });
 
 const keysDialog = part(document, '#keys-dialog', 'main');
@@ -219,13 +249,20 @@ document.addEventListener('keydown', (event) => {
     part(menu, 'summary', 'menu').focus();
   }
   // A character key works only where no text is typed: with a plot focused, or nothing.
-  const isFree = event.target === document.body || event.target.matches?.('[role=slider], [role=application], .view-link');
+  const isFree =
+    event.target === document.body || event.target.matches?.('[role=slider], [role=application], .view-link');
   if (event.key === '?' && isFree) keysDialog.showModal();
 });
 
 addEventListener('unhandledrejection', (event) => {
   shell.notice.hidden = false;
-  shell.notice.append(element('p', { role: 'alert' }, `The page has a fault: ${event.reason?.message ?? event.reason}. Loading it again may help.`));
+  shell.notice.append(
+    element(
+      'p',
+      { role: 'alert' },
+      `The page has a fault: ${event.reason?.message ?? event.reason}. Loading it again may help.`,
+    ),
+  );
 });
 
 isWide.addEventListener('change', () => arrange(stageOf(state)));

@@ -17,12 +17,19 @@ export function parseNpy(buffer) {
   const start = (isShort ? 10 : 12) + headerLength;
   const header = new TextDecoder().decode(bytes.subarray(isShort ? 10 : 12, start));
   const element = elements[/'descr':\s*'([^']+)'/.exec(header)?.[1]];
-  const shape = /'shape':\s*\(([^)]*)\)/.exec(header)?.[1].split(',').filter((part) => part.trim()).map(Number);
-  if (!element || !shape || /'fortran_order':\s*True/.test(header)) throw new Error(`npy: cannot read ${header.trim()}`);
+  const shape = /'shape':\s*\(([^)]*)\)/
+    .exec(header)?.[1]
+    .split(',')
+    .filter((part) => part.trim())
+    .map(Number);
+  if (!element || !shape || /'fortran_order':\s*True/.test(header))
+    throw new Error(`npy: cannot read ${header.trim()}`);
   const count = shape.reduce((product, extent) => product * extent, 1);
   if (bytes.length < start + count * element.BYTES_PER_ELEMENT) throw new Error('npy: the file is cut short');
   // A copy where the header ends off the element's boundary; NumPy and the server align to 64, others need not.
   const isAligned = start % element.BYTES_PER_ELEMENT === 0;
-  const data = isAligned ? new element(buffer, start, count) : new element(buffer.slice(start, start + count * element.BYTES_PER_ELEMENT));
+  const data = isAligned
+    ? new element(buffer, start, count)
+    : new element(buffer.slice(start, start + count * element.BYTES_PER_ELEMENT));
   return { shape, data };
 }

@@ -74,7 +74,11 @@ export function intervalText({ value, low = null, high = null }) {
   const largest = Math.max(Math.abs(value), Math.abs(low ?? 0), Math.abs(high ?? 0));
   // Beyond the range of plain decimals powers of ten read better, and nothing lines up anyway.
   if (decimals === null || decimals > 6 || largest >= 1e6) {
-    return { value: numberText(value), low: low === null ? null : numberText(low), high: high === null ? null : numberText(high) };
+    return {
+      value: numberText(value),
+      low: low === null ? null : numberText(low),
+      high: high === null ? null : numberText(high),
+    };
   }
   const text = (number) => (number < 0 ? minus : '') + fixedText(Math.abs(number), decimals);
   return { value: text(value), low: text(low), high: text(high) };

@@ -38,13 +38,23 @@ export function labelOf(name) {
   if (kind === 'coefficient') return `Coefficient of mode ${rest[0]}`;
   if (kind === 'signal') return `Signal ${rest.join(':')}`;
   if (kind === 'point') return `OPD at row ${rest[0]}, column ${rest[1]}`;
-  const words = name.replace(/^opd_rms_/, 'OPD_rms, ').replaceAll('_', ' ').replace('OPD rms', 'OPD_rms');
+  const words = name
+    .replace(/^opd_rms_/, 'OPD_rms, ')
+    .replaceAll('_', ' ')
+    .replace('OPD rms', 'OPD_rms');
   return words.charAt(0).toUpperCase() + words.slice(1);
 }
 
 const conditionUnits = {
-  velocity_m_s: 'm/s', density_kg_m3: 'kg/m3', temperature_k: 'K', wavelength_m: 'm', reference_length_m: 'm',
-  aperture_diameter_m: 'm', gladstone_dale_m3_kg: 'm3/kg', azimuth_deg: 'deg', elevation_deg: 'deg',
+  velocity_m_s: 'm/s',
+  density_kg_m3: 'kg/m3',
+  temperature_k: 'K',
+  wavelength_m: 'm',
+  reference_length_m: 'm',
+  aperture_diameter_m: 'm',
+  gladstone_dale_m3_kg: 'm3/kg',
+  azimuth_deg: 'deg',
+  elevation_deg: 'deg',
 };
 
 /** Unit that a condition's name ends with. */
@@ -52,7 +62,13 @@ export const conditionUnit = (name) => conditionUnits[name] ?? '1';
 
 /** Values of `statistics` that may be mapped over the viewing angles, in the order of the form. */
 export const fieldQuantities = Object.freeze([
-  'opd_rms_mean', 'opd_rms_overall', 'opd_rms_std', 'skewness', 'kurtosis', 'effective_samples', 'lognormal_sigma',
+  'opd_rms_mean',
+  'opd_rms_overall',
+  'opd_rms_std',
+  'skewness',
+  'kurtosis',
+  'effective_samples',
+  'lognormal_sigma',
 ]);
 
 /** Quantities of a view that can be drawn against time. */
@@ -63,6 +79,7 @@ export function seriesQuantities(view) {
 
 /** Azimuth and elevation of a view, for people. */
 export function angleText({ azimuth_deg: azimuth, elevation_deg: elevation }) {
-  const degrees = (value) => (value === null || value === undefined ? 'unknown' : `${String(value).replace('-', '\u2212')}°`);
+  const degrees = (value) =>
+    value === null || value === undefined ? 'unknown' : `${String(value).replace('-', '\u2212')}°`;
   return `azimuth ${degrees(azimuth)}, elevation ${degrees(elevation)}`;
 }

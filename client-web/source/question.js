@@ -4,7 +4,7 @@
 import { ApiError, ConnectionError } from './api.js';
 import { jobFace, lostFace, refusalFace, workingFace } from './faces.js';
 
-const patienceMilliseconds = 300;  // work shorter than that needs no announcement
+const patienceMilliseconds = 300; // work shorter than that needs no announcement
 const retrySeconds = 5;
 
 /**
@@ -16,7 +16,7 @@ const retrySeconds = 5;
  */
 export function createQuestion(api, host) {
   let controller = null;
-  let current = null;   // key of what is asked or shown
+  let current = null; // key of what is asked or shown
   let retryTimer = null;
 
   function stop() {

@@ -7,7 +7,7 @@ function stored() {
   try {
     return localStorage.getItem(key) ?? 'system';
   } catch {
-    return 'system';  // storage may be forbidden; then the choice holds for this page
+    return 'system'; // storage may be forbidden; then the choice holds for this page
   }
 }
 
@@ -32,7 +32,8 @@ export function followTheme(select, repaint) {
     }
     repaint();
   });
-  for (const query of ['(prefers-color-scheme: dark)', '(forced-colors: active)']) matchMedia(query).addEventListener('change', repaint);
+  for (const query of ['(prefers-color-scheme: dark)', '(forced-colors: active)'])
+    matchMedia(query).addEventListener('change', repaint);
   addEventListener('beforeprint', () => {
     document.documentElement.dataset.theme = 'light';
     repaint();

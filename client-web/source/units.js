@@ -55,7 +55,9 @@ export function quantityText(number, unit) {
 export function unitMeaning(unit, conditions) {
   if (unit === 'waves') {
     const wavelength = conditions?.wavelength_m;
-    return wavelength ? `one wave is ${Number((wavelength * 1e9).toPrecision(6))} nm` : 'one wave is the wavelength of each file';
+    return wavelength
+      ? `one wave is ${Number((wavelength * 1e9).toPrecision(6))} nm`
+      : 'one wave is the wavelength of each file';
   }
   if (unit === 'normalised') {
     return 'divided by (density / 1.225 kg/m³) · Mach² · reference length';

@@ -49,9 +49,16 @@ const kinds = {
 
 /** A part of the preparation is text here: the server alone knows what it accepts, and says so. */
 const preparationDefaults = {
-  from: null, to: null, first: null, last: null,
-  aperture: null, obscuration: '0', center: '0,0',
-  remove: 'piston,tilt,mean', mean_over: 'record', length_unit: 'um',
+  from: null,
+  to: null,
+  first: null,
+  last: null,
+  aperture: null,
+  obscuration: '0',
+  center: '0,0',
+  remove: 'piston,tilt,mean',
+  mean_over: 'record',
+  length_unit: 'um',
 };
 
 /** Every name an address may hold, in the order in which it is written. */
@@ -155,7 +162,15 @@ export function withView(state, view) {
 /** State of a run chosen in `state`: what was prepared stays, but for a window, which belongs to one record. */
 export function withRun(state, run) {
   return changed(state, {
-    run, view: null, show: null, zoom: null, frame: null, from: null, to: null, first: null, last: null,
+    run,
+    view: null,
+    show: null,
+    zoom: null,
+    frame: null,
+    from: null,
+    to: null,
+    first: null,
+    last: null,
     field_limits: null,
   });
 }

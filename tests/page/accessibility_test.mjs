@@ -15,7 +15,12 @@ before(async () => {
   browser = await launch();
   const { run, views } = await tunnelRun(site);
   const flawed = views.find(({ checks }) => checks.length > 0) ?? views[0];
-  places = { archive: '/', run: `/?run=${run.id}`, view: `/?run=${run.id}&view=${flawed.id}&frame=20`, index: '/?show=index' };
+  places = {
+    archive: '/',
+    run: `/?run=${run.id}`,
+    view: `/?run=${run.id}&view=${flawed.id}&frame=20`,
+    index: '/?show=index',
+  };
 });
 after(async () => {
   await browser?.close();
@@ -36,11 +41,16 @@ for (const { name, options } of looks) {
       await page.goto(site.url + places[place]);
       await settled(page);
       for (const button of await page.getByRole('button', { name: 'Numbers' }).all()) await button.click();
-      for (const details of await page.locator('.more > summary, .preparation:not([open]) > summary').all()) await details.click();
+      for (const details of await page.locator('.more > summary, .preparation:not([open]) > summary').all())
+        await details.click();
 
       await accessible(page);
 
-      assert.equal(await page.evaluate(() => document.documentElement.scrollWidth - innerWidth), 0, 'nothing sticks out sideways');
+      assert.equal(
+        await page.evaluate(() => document.documentElement.scrollWidth - innerWidth),
+        0,
+        'nothing sticks out sideways',
+      );
       assert.deepEqual(complaints, []);
       await context.close();
     });
@@ -58,7 +68,10 @@ test('at 320 pixels, which is a desktop page at 400 percent, nothing sticks out 
 });
 
 test('with forced colours the page still draws, and is accessible', async () => {
-  const { context, page, complaints } = await openPage(browser, { viewport: { width: 1440, height: 900 }, forcedColors: 'active' });
+  const { context, page, complaints } = await openPage(browser, {
+    viewport: { width: 1440, height: 900 },
+    forcedColors: 'active',
+  });
   await page.goto(site.url + places.view);
   await settled(page);
 
@@ -108,7 +121,15 @@ test('Tab visits every plot once, always with something to see, and nothing twic
     if (here.isPlot) visited.push(here.figure);
   }
 
-  assert.deepEqual(visited.sort(), ['convergence', 'field-of-regard', 'frames', 'histogram', 'mean-map', 'rms-map', 'series']);
+  assert.deepEqual(visited.sort(), [
+    'convergence',
+    'field-of-regard',
+    'frames',
+    'histogram',
+    'mean-map',
+    'rms-map',
+    'series',
+  ]);
   await context.close();
 });
 

@@ -4,17 +4,44 @@
 
 import { test } from 'node:test';
 import assert from 'node:assert/strict';
-import { diverging, divergingColour, hexColour, isLight, linearFromByte, oklabFromLinear, sequential, sequentialColour, tableIndex } from '../../client-web/source/plots/colour_maps.js';
+import {
+  diverging,
+  divergingColour,
+  hexColour,
+  isLight,
+  linearFromByte,
+  oklabFromLinear,
+  sequential,
+  sequentialColour,
+  tableIndex,
+} from '../../client-web/source/plots/colour_maps.js';
 
 const eyes = {
-  normal: [[1, 0, 0], [0, 1, 0], [0, 0, 1]],
-  protanope: [[0.152286, 1.052583, -0.204868], [0.114503, 0.786281, 0.099216], [-0.003882, -0.048116, 1.051998]],
-  deuteranope: [[0.367322, 0.860646, -0.227968], [0.280085, 0.672501, 0.047413], [-0.01182, 0.04294, 0.968881]],
-  tritanope: [[1.255528, -0.076749, -0.178779], [-0.078411, 0.930809, 0.147602], [0.004733, 0.691367, 0.3039]],
+  normal: [
+    [1, 0, 0],
+    [0, 1, 0],
+    [0, 0, 1],
+  ],
+  protanope: [
+    [0.152286, 1.052583, -0.204868],
+    [0.114503, 0.786281, 0.099216],
+    [-0.003882, -0.048116, 1.051998],
+  ],
+  deuteranope: [
+    [0.367322, 0.860646, -0.227968],
+    [0.280085, 0.672501, 0.047413],
+    [-0.01182, 0.04294, 0.968881],
+  ],
+  tritanope: [
+    [1.255528, -0.076749, -0.178779],
+    [-0.078411, 0.930809, 0.147602],
+    [0.004733, 0.691367, 0.3039],
+  ],
 };
 
 const clamped = (value) => Math.min(1, Math.max(0, value));
-const seenBy = (matrix, linear) => oklabFromLinear(matrix.map((row) => clamped(row.reduce((sum, share, i) => sum + share * linear[i], 0))));
+const seenBy = (matrix, linear) =>
+  oklabFromLinear(matrix.map((row) => clamped(row.reduce((sum, share, i) => sum + share * linear[i], 0))));
 const linearOf = (map, t) => [0, 1, 2].map((k) => linearFromByte(map.bytes[4 * Math.round(t * 255) + k]));
 const samples = Array.from({ length: 129 }, (_, i) => i / 128);
 
@@ -23,20 +50,35 @@ function mapOfStops(stops) {
   const bytes = new Uint8ClampedArray(1024);
   const colours = stops.map((hex) => [1, 3, 5].map((i) => parseInt(hex.slice(i, i + 2), 16)));
   for (let i = 0; i < 256; ++i) {
-    const place = (i / 255) * (stops.length - 1), k = Math.min(stops.length - 2, Math.floor(place)), share = place - k;
+    const place = (i / 255) * (stops.length - 1),
+      k = Math.min(stops.length - 2, Math.floor(place)),
+      share = place - k;
     bytes.set([...[0, 1, 2].map((c) => colours[k][c] * (1 - share) + colours[k + 1][c] * share), 255], 4 * i);
   }
   return { bytes };
 }
 
 // ColorBrewer's 11-class RdYlGn (Brewer, colorbrewer2.org), stops from memory.
-const redYellowGreen = mapOfStops(['#a50026', '#d73027', '#f46d43', '#fdae61', '#fee08b', '#ffffbf', '#d9ef8b', '#a6d96a', '#66bd63', '#1a9850', '#006837']);
+const redYellowGreen = mapOfStops([
+  '#a50026',
+  '#d73027',
+  '#f46d43',
+  '#fdae61',
+  '#fee08b',
+  '#ffffbf',
+  '#d9ef8b',
+  '#a6d96a',
+  '#66bd63',
+  '#1a9850',
+  '#006837',
+]);
 
 /** Smallest distance between the two arms at equal size, over sizes above a quarter of full scale. */
 function armsDistance(map, matrix) {
   let least = Infinity;
   for (let size = 0.25; size <= 1; size += 1 / 64) {
-    const a = seenBy(matrix, linearOf(map, (1 - size) / 2)), b = seenBy(matrix, linearOf(map, (1 + size) / 2));
+    const a = seenBy(matrix, linearOf(map, (1 - size) / 2)),
+      b = seenBy(matrix, linearOf(map, (1 + size) / 2));
     least = Math.min(least, Math.hypot(a[0] - b[0], a[1] - b[1], a[2] - b[2]));
   }
   return least;
@@ -44,7 +86,11 @@ function armsDistance(map, matrix) {
 
 /** Largest difference in lightness between the two arms. */
 function armsLightness(map) {
-  return Math.max(...samples.map((size) => Math.abs(oklabFromLinear(linearOf(map, (1 - size) / 2))[0] - oklabFromLinear(linearOf(map, (1 + size) / 2))[0])));
+  return Math.max(
+    ...samples.map((size) =>
+      Math.abs(oklabFromLinear(linearOf(map, (1 - size) / 2))[0] - oklabFromLinear(linearOf(map, (1 + size) / 2))[0]),
+    ),
+  );
 }
 
 // What page tests of colour for blind eyes ask: 0.08 in OKLab is four times what is just told apart side by side (0.02,
@@ -95,7 +141,8 @@ test('no colour lies outside sRGB, where it would be clipped to a flat patch', (
 
 test('neighbouring colours of the sequential map are told apart evenly, within a factor of three', () => {
   const steps = samples.slice(1).map((t, i) => {
-    const a = oklabFromLinear(linearOf(sequential, t)), b = oklabFromLinear(linearOf(sequential, samples[i]));
+    const a = oklabFromLinear(linearOf(sequential, t)),
+      b = oklabFromLinear(linearOf(sequential, samples[i]));
     return Math.hypot(a[0] - b[0], a[1] - b[1], a[2] - b[2]);
   });
 
@@ -110,7 +157,10 @@ test('OKLab of white is one and of mid grey is its cube root: Ottosson 2020, fro
 });
 
 test('a number finds its entry, and numbers beyond the limits the ends', () => {
-  assert.deepEqual([-5, 0, 0.5, 1, 7].map((value) => tableIndex(value, 0, 1)), [0, 0, 128, 255, 255]);
+  assert.deepEqual(
+    [-5, 0, 0.5, 1, 7].map((value) => tableIndex(value, 0, 1)),
+    [0, 0, 128, 255, 255],
+  );
   assert.equal(tableIndex(3, 3, 3), 128);
 });
 

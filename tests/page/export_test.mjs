@@ -10,15 +10,37 @@ import { parseNpy } from '../../client-web/source/npy.js';
 import { address } from '../../client-web/source/api.js';
 
 test('CSV has provenance, a head with units, and empty fields for no value', () => {
-  const text = csvText({ columns: [{ name: 'time', unit: 's', values: [0, 0.5] }, { name: 'a,b', unit: '1', values: [null, 1e-7] }] }, ['Bentlight', 'digest ab']);
+  const text = csvText(
+    {
+      columns: [
+        { name: 'time', unit: 's', values: [0, 0.5] },
+        { name: 'a,b', unit: '1', values: [null, 1e-7] },
+      ],
+    },
+    ['Bentlight', 'digest ab'],
+  );
 
   assert.equal(text, '# Bentlight\r\n# digest ab\r\ntime (s),"a,b"\r\n0,\r\n0.5,1e-7\r\n');
 });
 
 test('a map becomes columns in the order of its rows', () => {
-  const { columns } = mapTable({ name: 'rms', unit: 'um', axisUnit: 'm', x: [1, 2], y: [10, 20], values: [1, 2, 3, 4] });
+  const { columns } = mapTable({
+    name: 'rms',
+    unit: 'um',
+    axisUnit: 'm',
+    x: [1, 2],
+    y: [10, 20],
+    values: [1, 2, 3, 4],
+  });
 
-  assert.deepEqual(columns.map(({ values }) => values), [[10, 10, 20, 20], [1, 2, 1, 2], [1, 2, 3, 4]]);
+  assert.deepEqual(
+    columns.map(({ values }) => values),
+    [
+      [10, 10, 20, 20],
+      [1, 2, 1, 2],
+      [1, 2, 3, 4],
+    ],
+  );
 });
 
 // The check value of CRC-32 over the nine digits, as every catalogue of CRCs lists it (from memory).
@@ -28,14 +50,18 @@ test('the CRC of a PNG chunk is CRC-32', () => {
 
 test('text put into a PNG leaves a file that is still a PNG and holds the text', () => {
   const chunk = (kind, data) => {
-    const body = Buffer.concat([Buffer.from(kind), data]), head = Buffer.alloc(4), tail = Buffer.alloc(4);
+    const body = Buffer.concat([Buffer.from(kind), data]),
+      head = Buffer.alloc(4),
+      tail = Buffer.alloc(4);
     head.writeUInt32BE(data.length);
     tail.writeUInt32BE(zlib.crc32 ? zlib.crc32(body) : crc32(body));
     return Buffer.concat([head, body, tail]);
   };
   const png = Buffer.concat([
-    Buffer.from('89504e470d0a1a0a', 'hex'), chunk('IHDR', Buffer.from('00000001000000010800000000', 'hex')),
-    chunk('IDAT', zlib.deflateSync(Buffer.from([0, 255]))), chunk('IEND', Buffer.alloc(0)),
+    Buffer.from('89504e470d0a1a0a', 'hex'),
+    chunk('IHDR', Buffer.from('00000001000000010800000000', 'hex')),
+    chunk('IDAT', zlib.deflateSync(Buffer.from([0, 255]))),
+    chunk('IEND', Buffer.alloc(0)),
   ]);
 
   const whole = Buffer.from(withText(png, 'Source', 'Bentlight · µm'));
@@ -51,15 +77,22 @@ test('text put into a PNG leaves a file that is still a PNG and holds the text',
 });
 
 test('addresses hold only what was given', () => {
-  assert.equal(address('/v1/views/a/series', { bins: 400, from: null, quantity: 'signal:p q', remove: 'piston,tilt' }), '/v1/views/a/series?bins=400&quantity=signal:p%20q&remove=piston,tilt');
+  assert.equal(
+    address('/v1/views/a/series', { bins: 400, from: null, quantity: 'signal:p q', remove: 'piston,tilt' }),
+    '/v1/views/a/series?bins=400&quantity=signal:p%20q&remove=piston,tilt',
+  );
 });
 
 test('names of files are plain', () => {
-  assert.equal(fileStem('a/b c', 'field-of-regard', '0123456789abcdef', 'signal:p'), 'a-b-c_field-of-regard_01234567_signal-p');
+  assert.equal(
+    fileStem('a/b c', 'field-of-regard', '0123456789abcdef', 'signal:p'),
+    'a-b-c_field-of-regard_01234567_signal-p',
+  );
 });
 
 test('no call lets an address break out of its quotes', () => {
-  for (const { text } of callTexts({ url: "http://127.0.0.1/v1/views/x'; rm -rf y/series", arrays: [] })) assert.ok(!text.includes("x';"), text);
+  for (const { text } of callTexts({ url: "http://127.0.0.1/v1/views/x'; rm -rf y/series", arrays: [] }))
+    assert.ok(!text.includes("x';"), text);
 });
 
 // NumPy writes them, we read them: a crossed round trip.
@@ -78,9 +111,12 @@ np.save("a.npy", a); np.save("b.npy", np.linspace(0, 1, 5)); np.save("c.npy", a.
     const a = parseNpy(read('a.npy'));
     assert.deepEqual(a.shape, [2, 3, 4]);
     assert.ok(Number.isNaN(a.data[0]));
-    assert.deepEqual([...a.data.subarray(1)], Array.from({ length: 23 }, (_, i) => i + 1));
+    assert.deepEqual(
+      [...a.data.subarray(1)],
+      Array.from({ length: 23 }, (_, i) => i + 1),
+    );
     assert.deepEqual([...parseNpy(read('b.npy')).data], [0, 0.25, 0.5, 0.75, 1]);
-    assert.throws(() => parseNpy(read('c.npy')), /cannot read/);  // column order, which the service never sends
+    assert.throws(() => parseNpy(read('c.npy')), /cannot read/); // column order, which the service never sends
     assert.throws(() => parseNpy(read('a.npy').slice(0, 150)), /cut short/);
     assert.throws(() => parseNpy(new ArrayBuffer(20)), /no NPY/);
   } finally {

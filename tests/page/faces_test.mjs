@@ -27,12 +27,20 @@ beforeEach(async () => {
 });
 afterEach(async () => {
   await opened.context.close();
-  assert.deepEqual(opened.complaints.filter((text) => !expected.test(text)), []);
+  assert.deepEqual(
+    opened.complaints.filter((text) => !expected.test(text)),
+    [],
+  );
 });
 
 test('a refusal says the code, the parameter and what would be accepted, at the plot and at the field', async () => {
-  site.intercept = (url) => url.searchParams.get('aperture') === '900%' && url.pathname.startsWith('/v1/views/')
-    ? problem(400, 'aperture-outside-mask', 'aperture=900% reaches beyond the points of this view', { parameter: 'aperture', accepted: ['up to 100%'] }) : undefined;
+  site.intercept = (url) =>
+    url.searchParams.get('aperture') === '900%' && url.pathname.startsWith('/v1/views/')
+      ? problem(400, 'aperture-outside-mask', 'aperture=900% reaches beyond the points of this view', {
+          parameter: 'aperture',
+          accepted: ['up to 100%'],
+        })
+      : undefined;
   await page.goto(site.url + view);
   await settled(page);
 
@@ -43,8 +51,16 @@ test('a refusal says the code, the parameter and what would be accepted, at the 
   await face.waitFor();
   assert.match(await face.innerText(), /Not possible[\s\S]*aperture=900%[\s\S]*up to 100%[\s\S]*aperture-outside-mask/);
   assert.match(await page.locator('.field-error').innerText(), /up to 100%/);
-  assert.equal(await page.evaluate(() => document.activeElement.name), 'aperture', 'the field that must be mended has the focus');
-  assert.equal(await page.locator('[data-name=series] .picture').isVisible(), false, 'no plot of another question stands there');
+  assert.equal(
+    await page.evaluate(() => document.activeElement.name),
+    'aperture',
+    'the field that must be mended has the focus',
+  );
+  assert.equal(
+    await page.locator('[data-name=series] .picture').isVisible(),
+    false,
+    'no plot of another question stands there',
+  );
   await accessible(page);
 });
 
@@ -70,7 +86,10 @@ test('when the line is lost the old plot stays, greyed, and comes back by itself
 
 test('a busy server is asked again after the time it names', async () => {
   let refusals = 1;
-  site.intercept = (url) => (url.pathname.endsWith('/series') && refusals-- > 0 ? { ...problem(503, 'overloaded', 'all hands are busy'), headers: { 'Retry-After': '1' } } : undefined);
+  site.intercept = (url) =>
+    url.pathname.endsWith('/series') && refusals-- > 0
+      ? { ...problem(503, 'overloaded', 'all hands are busy'), headers: { 'Retry-After': '1' } }
+      : undefined;
   await page.goto(site.url + view);
 
   const face = page.locator('[data-name=series] .face-lost');
@@ -81,7 +100,8 @@ test('a busy server is asked again after the time it names', async () => {
 });
 
 test('an archive without views says why and what to do', async () => {
-  site.intercept = (url) => (['/v1/campaigns', '/v1/runs'].includes(url.pathname) ? { body: '{"items":[],"next":null}' } : undefined);
+  site.intercept = (url) =>
+    ['/v1/campaigns', '/v1/runs'].includes(url.pathname) ? { body: '{"items":[],"next":null}' } : undefined;
   await page.goto(site.url);
 
   const face = page.locator('.face-empty');
@@ -103,10 +123,20 @@ test('a view that does not exist is said, with a way out', async () => {
 
 /** A server whose statistics are long work: 202, then events as the test sends them. */
 function longStatistics() {
-  const job = { job: 'j1', analysis: 'statistics', state: 'running', progress: 0, done: 0, total: 4 * 1024 ** 3, url: '/v1/jobs/j1', events: '/v1/jobs/j1/events' };
+  const job = {
+    job: 'j1',
+    analysis: 'statistics',
+    state: 'running',
+    progress: 0,
+    done: 0,
+    total: 4 * 1024 ** 3,
+    url: '/v1/jobs/j1',
+    events: '/v1/jobs/j1/events',
+  };
   const seen = { stream: null, deleted: 0, isDone: false };
   seen.intercept = (url, request, response) => {
-    if (url.pathname.endsWith('/statistics') && !seen.isDone) return { status: 202, body: JSON.stringify(job), headers: { Location: job.url } };
+    if (url.pathname.endsWith('/statistics') && !seen.isDone)
+      return { status: 202, body: JSON.stringify(job), headers: { Location: job.url } };
     if (url.pathname === '/v1/results/r1') return undefined;
     if (url.pathname === job.events) {
       response.writeHead(200, { 'Content-Type': 'text/event-stream', 'Cache-Control': 'no-store' });
@@ -166,7 +196,10 @@ test('work that failed shows the problem that the server names', async () => {
   await page.goto(site.url + view);
   await streamOf(seen);
 
-  seen.send('failed', { state: 'failed', problem: { status: 409, code: 'file-changed', detail: 'wall-dome/v.h5 changed since it was indexed' } });
+  seen.send('failed', {
+    state: 'failed',
+    problem: { status: 409, code: 'file-changed', detail: 'wall-dome/v.h5 changed since it was indexed' },
+  });
 
   const face = page.locator('.face-refusal').first();
   await face.waitFor();
@@ -196,7 +229,22 @@ test('warnings stand at the plot they belong to', async () => {
   site.intercept = (url) => {
     if (!url.pathname.endsWith('/series')) return undefined;
     const array = (data, unit) => ({ shape: [2], unit, axes: ['time'], data });
-    return { body: JSON.stringify({ analysis: 'series', subject: 'v', values: {}, arrays: { time: array([0, 1], 's'), frame: array([0, 50], 'frames'), low: array([1, 1], 'um'), mean: array([2, null], 'um'), high: array([3, 3], 'um') }, warnings: [{ code: 'missing-frames', text: '3 frames are missing' }], provenance: { preparation: { first: 0, last: 99 } } }) };
+    return {
+      body: JSON.stringify({
+        analysis: 'series',
+        subject: 'v',
+        values: {},
+        arrays: {
+          time: array([0, 1], 's'),
+          frame: array([0, 50], 'frames'),
+          low: array([1, 1], 'um'),
+          mean: array([2, null], 'um'),
+          high: array([3, 3], 'um'),
+        },
+        warnings: [{ code: 'missing-frames', text: '3 frames are missing' }],
+        provenance: { preparation: { first: 0, last: 99 } },
+      }),
+    };
   };
   await page.goto(site.url + view);
   await settled(page);
@@ -206,7 +254,15 @@ test('warnings stand at the plot they belong to', async () => {
 
 test('names from the archive are shown as text, whatever they hold', async () => {
   const evil = '<img src=x onerror="document.title=1"><b>bold';
-  site.intercept = (url) => (url.pathname === '/v1/runs' ? { body: JSON.stringify({ items: [{ id: 'e', name: evil, campaign: 'wall-dome', views: 1, source: evil }], next: null }) } : undefined);
+  site.intercept = (url) =>
+    url.pathname === '/v1/runs'
+      ? {
+          body: JSON.stringify({
+            items: [{ id: 'e', name: evil, campaign: 'wall-dome', views: 1, source: evil }],
+            next: null,
+          }),
+        }
+      : undefined;
   await page.goto(site.url);
 
   await page.getByRole('link', { name: evil }).waitFor();

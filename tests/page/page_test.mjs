@@ -33,7 +33,11 @@ const query = () => new URL(page.url()).searchParams;
 
 /** Waits until a figure's reading line matches, and gives it. */
 async function reads(name, pattern) {
-  await page.waitForFunction(([figure, source]) => new RegExp(source).test(document.querySelector(`[data-name="${figure}"] .readout`).textContent), [name, pattern.source]);
+  await page.waitForFunction(
+    ([figure, source]) =>
+      new RegExp(source).test(document.querySelector(`[data-name="${figure}"] .readout`).textContent),
+    [name, pattern.source],
+  );
   return readout(name).textContent();
 }
 
@@ -48,7 +52,10 @@ test('from the archive to a run to a view, and back again', async () => {
 
   await page.locator(`.view-link[data-view="${view.id}"]`).click();
   await page.locator('[data-name=series] canvas').waitFor();
-  assert.match(await page.locator('h1').innerText(), new RegExp(`Azimuth ${view.azimuth_deg}°, elevation ${view.elevation_deg}°`));
+  assert.match(
+    await page.locator('h1').innerText(),
+    new RegExp(`Azimuth ${view.azimuth_deg}°, elevation ${view.elevation_deg}°`),
+  );
   assert.match(await page.title(), /azimuth .* Bentlight/);
 
   await page.goBack();
@@ -71,10 +78,16 @@ test('the field of regard is one tab stop, walked with arrow keys, and reads its
 
   const id = await page.evaluate(() => document.activeElement.dataset.view);
   const place = provenance.views.indexOf(id);
-  const text = await reads('field-of-regard', new RegExp(`azimuth ${arrays.azimuth.data[place]}°, elevation ${arrays.elevation.data[place]}°`));
+  const text = await reads(
+    'field-of-regard',
+    new RegExp(`azimuth ${arrays.azimuth.data[place]}°, elevation ${arrays.elevation.data[place]}°`),
+  );
   // Shown with two figures of its interval's half width: half of the last of them.
   const shown = parsed(/: ([^ \u00a0]+)/.exec(text)[1]);
-  assert.ok(Math.abs(shown - arrays.value.data[place]) <= (arrays.high.data[place] - arrays.low.data[place]) * 0.05, text);
+  assert.ok(
+    Math.abs(shown - arrays.value.data[place]) <= (arrays.high.data[place] - arrays.low.data[place]) * 0.05,
+    text,
+  );
 
   await page.keyboard.press('Enter');
   await page.locator('[data-name=series] canvas').waitFor();
@@ -91,7 +104,9 @@ test('the field of regard can be read as a table', async () => {
   const cells = await page.locator('[data-name=field-of-regard] tbody tr td:nth-child(4)').allInnerTexts();
   assert.equal(cells.length, views.length);
   // Five significant figures: half a unit of the fifth.
-  cells.forEach((cell, i) => assert.ok(Math.abs(parsed(cell) - arrays.value.data[i]) <= 5e-5 * Math.abs(arrays.value.data[i]) + 1e-12));
+  cells.forEach((cell, i) =>
+    assert.ok(Math.abs(parsed(cell) - arrays.value.data[i]) <= 5e-5 * Math.abs(arrays.value.data[i]) + 1e-12),
+  );
 });
 
 test('the large number is the mean of OPD_rms with its interval', async () => {
@@ -108,7 +123,12 @@ test('the large number is the mean of OPD_rms with its interval', async () => {
 test('arrow keys read the series, and the reading is what the interface says', async () => {
   await page.goto(viewAddress());
   await settled(page);
-  const path = await page.evaluate(() => performance.getEntriesByType('resource').map(({ name }) => name).find((name) => name.includes('/series?')));
+  const path = await page.evaluate(() =>
+    performance
+      .getEntriesByType('resource')
+      .map(({ name }) => name)
+      .find((name) => name.includes('/series?')),
+  );
   const { arrays } = await read(site, path.slice(site.url.length));
 
   await page.getByRole('slider', { name: /^Against time/ }).focus();
@@ -126,7 +146,10 @@ test('zooming asks for finer columns of the stretch that is shown', async () => 
   await page.goto(viewAddress());
   await settled(page);
   const asked = [];
-  page.on('request', (request) => request.url().includes('/series?') && asked.push(new URL(request.url()).searchParams));
+  page.on(
+    'request',
+    (request) => request.url().includes('/series?') && asked.push(new URL(request.url()).searchParams),
+  );
 
   await page.getByRole('slider', { name: /^Against time/ }).focus();
   await page.keyboard.press('End');
@@ -156,7 +179,8 @@ test('dragging zooms, a double click shows all again', async () => {
   await page.mouse.up();
   await settled(page);
 
-  const zoom = query().get('zoom').split('..').map(Number), whole = view.frames / view.frame_rate_hz;
+  const zoom = query().get('zoom').split('..').map(Number),
+    whole = view.frames / view.frame_rate_hz;
   assert.ok(Math.abs(zoom[0] / whole - 0.25) < 0.02 && Math.abs(zoom[1] / whole - 0.5) < 0.02, String(zoom));
   assert.equal(query().get('frame'), null, 'the drag is no click');
 
@@ -190,12 +214,16 @@ test('a point of the wavefront reads as the interface says, and what is outside 
   await map.focus();
   await map.press('ArrowUp');
   const text = await reads('frames', /^x /);
-  const row = Math.floor(rows / 2), column = Math.floor(columns / 2);
+  const row = Math.floor(rows / 2),
+    column = Math.floor(columns / 2);
   const value = arrays.frames.data[row * columns + column];
-  assert.ok(Math.abs(parsed(/: ([^\u00a0]+)/.exec(text)[1]) - value) <= 5e-4 * Math.abs(value) + 1e-9, `${text} ${value}`);
+  assert.ok(
+    Math.abs(parsed(/: ([^\u00a0]+)/.exec(text)[1]) - value) <= 5e-4 * Math.abs(value) + 1e-9,
+    `${text} ${value}`,
+  );
 
   await map.press('Home');
-  for (let k = 0; k < 10; ++k) await map.press('Shift+ArrowUp');  // into the corner, beyond the disc
+  for (let k = 0; k < 10; ++k) await map.press('Shift+ArrowUp'); // into the corner, beyond the disc
   await reads('frames', /outside the aperture/);
 });
 
@@ -203,14 +231,27 @@ test('the image is drawn from the numbers: colour where there is one, nothing wh
   const { arrays } = await read(site, `/v1/views/${view.id}/statistics`);
   await page.goto(viewAddress());
   await settled(page);
-  const { shape: [rows, columns], data } = arrays.rms_map;
+  const {
+    shape: [rows, columns],
+    data,
+  } = arrays.rms_map;
 
-  const seen = await page.evaluate(async ([height, width]) => {
-    const canvas = document.querySelector('[data-name="rms-map"] canvas');
-    const { sequential } = await import('/source/plots/colour_maps.js');
-    const [low, high] = [...document.querySelectorAll('[data-name="rms-map"] .limits input[type=number]')].map((input) => input.valueAsNumber);
-    return { pixels: [...canvas.getContext('2d').getImageData(0, 0, width, height).data], table: [...sequential.bytes], low, high };
-  }, [rows, columns]);
+  const seen = await page.evaluate(
+    async ([height, width]) => {
+      const canvas = document.querySelector('[data-name="rms-map"] canvas');
+      const { sequential } = await import('/source/plots/colour_maps.js');
+      const [low, high] = [...document.querySelectorAll('[data-name="rms-map"] .limits input[type=number]')].map(
+        (input) => input.valueAsNumber,
+      );
+      return {
+        pixels: [...canvas.getContext('2d').getImageData(0, 0, width, height).data],
+        table: [...sequential.bytes],
+        low,
+        high,
+      };
+    },
+    [rows, columns],
+  );
 
   let drawn = 0;
   for (let row = 0; row < rows; ++row) {
@@ -257,7 +298,9 @@ test('playing goes on by itself from replies of many frames, and stops when told
 
   await page.getByLabel('Speed of playing').selectOption('30');
   await page.getByRole('button', { name: 'Play' }).click();
-  await page.waitForFunction(() => Number(/frame (\d+)/.exec(document.querySelector('.frame-label').textContent)[1]) >= 25);
+  await page.waitForFunction(
+    () => Number(/frame (\d+)/.exec(document.querySelector('.frame-label').textContent)[1]) >= 25,
+  );
   await page.getByRole('button', { name: 'Pause' }).click();
   const frame = /frame (\d+)/.exec(await page.locator('.frame-label').innerText())[1];
   await page.waitForTimeout(300);
@@ -298,7 +341,10 @@ test('a changed preparation is computed anew, stands in the address, and Back un
   await page.getByLabel('tip and tilt').uncheck();
   await page.getByLabel('steady lensing', { exact: true }).uncheck();
   await page.getByRole('button', { name: 'Apply' }).click();
-  await page.waitForFunction((text) => document.querySelector('.finding-item.is-first .number').textContent !== text, before);
+  await page.waitForFunction(
+    (text) => document.querySelector('.finding-item.is-first .number').textContent !== text,
+    before,
+  );
   await settled(page);
 
   assert.equal(query().get('remove'), 'piston');
@@ -307,7 +353,10 @@ test('a changed preparation is computed anew, stands in the address, and Back un
   assert.match(await page.locator('[data-name=values] .warnings').innerText(), /steady lensing/);
 
   await page.goBack();
-  await page.waitForFunction((text) => document.querySelector('.finding-item.is-first .number').textContent === text, before);
+  await page.waitForFunction(
+    (text) => document.querySelector('.finding-item.is-first .number').textContent === text,
+    before,
+  );
   assert.ok(await page.getByLabel('tip and tilt').isChecked());
 });
 
@@ -329,10 +378,14 @@ test('the unit changes at once, in numbers, labels and names alike', async () =>
 test('a smaller aperture with an obscuration is read from the frames, and shows in the map', async () => {
   await page.goto(viewAddress());
   await settled(page);
-  const masked = () => page.evaluate(() => {
-    const canvas = document.querySelector('[data-name="rms-map"] canvas');
-    return canvas.getContext('2d').getImageData(0, 0, canvas.width, canvas.height).data.filter((byte, i) => i % 4 === 3 && byte === 255).length;
-  });
+  const masked = () =>
+    page.evaluate(() => {
+      const canvas = document.querySelector('[data-name="rms-map"] canvas');
+      return canvas
+        .getContext('2d')
+        .getImageData(0, 0, canvas.width, canvas.height)
+        .data.filter((byte, i) => i % 4 === 3 && byte === 255).length;
+    });
   const whole = await masked();
 
   await page.getByLabel('Diameter').fill('70');
@@ -355,7 +408,9 @@ test('a window from the series narrows the statistics', async () => {
   assert.deepEqual([query().get('from'), query().get('to'), query().get('zoom')], ['0.01', '0.02', null]);
   const { values } = await read(site, `/v1/views/${view.id}/statistics?from=0.01&to=0.02`);
   const { value, low, high } = values.opd_rms_mean;
-  assert.ok(Math.abs(parsed(await page.locator('.finding-item.is-first .number').innerText()) - value) <= (high - low) * 0.05);
+  assert.ok(
+    Math.abs(parsed(await page.locator('.finding-item.is-first .number').innerText()) - value) <= (high - low) * 0.05,
+  );
 });
 
 test('what the server refuses stands at the field it is about', async () => {
@@ -391,8 +446,12 @@ test('locked limits stay when another view is opened, and cut ends are marked', 
 test('a pasted address opens the same plots', async () => {
   await page.goto(viewAddress('remove=piston,tilt&length_unit=nm&quantity=tip&zoom=0.005..0.02&frame=400'));
   await settled(page);
-  const shown = () => page.evaluate(() => [...document.querySelectorAll('.finding, .frame-label, .number, .axis-title')].map((each) => each.textContent));
-  const first = await shown(), address = page.url();
+  const shown = () =>
+    page.evaluate(() =>
+      [...document.querySelectorAll('.finding, .frame-label, .number, .axis-title')].map((each) => each.textContent),
+    );
+  const first = await shown(),
+    address = page.url();
 
   const other = await openPage(browser, { viewport: { width: 1440, height: 900 } });
   await other.page.goto(address);
@@ -412,7 +471,10 @@ test('companion signals can be drawn, in their own unit', async () => {
   await page.getByLabel('Quantity').selectOption(`signal:${signals[0].name}`);
   await page.getByRole('heading', { name: `Signal ${signals[0].name} against time` }).waitFor();
 
-  assert.match(await page.locator('[data-name=series] .axis-title').innerText(), new RegExp(`\\(${signals[0].unit.replace(/[/^]/g, '.')}`));
+  assert.match(
+    await page.locator('[data-name=series] .axis-title').innerText(),
+    new RegExp(`\\(${signals[0].unit.replace(/[/^]/g, '.')}`),
+  );
 });
 
 test('the index says which file was refused and why', async () => {

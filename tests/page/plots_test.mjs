@@ -1,6 +1,15 @@
 import { test } from 'node:test';
 import assert from 'node:assert/strict';
-import { extent, linearScale, logScale, niceAbove, paddedRange, symmetricLimits, tightLimits, zoomedRange } from '../../client-web/source/plots/scales.js';
+import {
+  extent,
+  linearScale,
+  logScale,
+  niceAbove,
+  paddedRange,
+  symmetricLimits,
+  tightLimits,
+  zoomedRange,
+} from '../../client-web/source/plots/scales.js';
 import { decadeLabel, decadeTicks, linearTicks, tickLabels } from '../../client-web/source/plots/ticks.js';
 import { bandPath, linePath, svg, toText } from '../../client-web/source/plots/svg_tree.js';
 
@@ -18,7 +27,10 @@ test('a scale and its inverse undo each other', () => {
 test('a log scale gives every decade the same length', () => {
   const scale = logScale([1, 1000], [0, 300]);
 
-  assert.deepEqual([1, 10, 100, 1000].map((value) => Math.round(scale.at(value))), [0, 100, 200, 300]);
+  assert.deepEqual(
+    [1, 10, 100, 1000].map((value) => Math.round(scale.at(value))),
+    [0, 100, 200, 300],
+  );
 });
 
 test('a scale without width puts everything in the middle', () => {

@@ -23,7 +23,10 @@ after(async () => {
   await site?.close();
 });
 beforeEach(async () => {
-  opened = await openPage(browser, { viewport: { width: 1440, height: 900 }, permissions: ['clipboard-read', 'clipboard-write'] });
+  opened = await openPage(browser, {
+    viewport: { width: 1440, height: 900 },
+    permissions: ['clipboard-read', 'clipboard-write'],
+  });
   page = opened.page;
   await page.goto(`${site.url}/?run=${run.id}&view=${view.id}`);
   await settled(page);
@@ -39,33 +42,46 @@ const figures = ['field-of-regard', 'series', 'frames', 'mean-map', 'rms-map', '
 async function saved(figure, entry) {
   const plot = page.locator(`[data-name="${figure}"]`);
   await plot.locator('.save summary').click();
-  const [download] = await Promise.all([page.waitForEvent('download'), plot.locator('.menu-items').getByText(entry, { exact: true }).click()]);
+  const [download] = await Promise.all([
+    page.waitForEvent('download'),
+    plot.locator('.menu-items').getByText(entry, { exact: true }).click(),
+  ]);
   return { name: download.suggestedFilename(), bytes: readFileSync(await download.path()) };
 }
 
 /** Columns of a CSV without quotes, below its lines of provenance. */
 function columnsOf(text) {
-  const lines = text.trim().split('\r\n'), rows = lines.filter((line) => !line.startsWith('#')).map((line) => line.split(','));
+  const lines = text.trim().split('\r\n'),
+    rows = lines.filter((line) => !line.startsWith('#')).map((line) => line.split(','));
   return { comments: lines.filter((line) => line.startsWith('#')), head: rows[0], rows: rows.slice(1) };
 }
 
 test('the series as CSV has the numbers of the interface, with units and provenance', async () => {
   const { name, bytes } = await saved('series', 'CSV');
   const { comments, head, rows } = columnsOf(bytes.toString());
-  const path = comments.find((line) => line.includes('http')).slice(2).replace(site.url, '');
+  const path = comments
+    .find((line) => line.includes('http'))
+    .slice(2)
+    .replace(site.url, '');
   const { arrays, provenance } = await read(site, path);
 
   assert.match(name, new RegExp(`^${view.id}_series_${provenance.digest.slice(0, 8)}_opd_rms\\.csv$`));
   assert.ok(comments.some((line) => line.includes(provenance.digest)));
   assert.deepEqual(head, ['time (s)', 'low (um)', 'high (um)', 'mean (um)']);
-  assert.deepEqual(rows.map((row) => Number(row[3])), arrays.mean.data);
+  assert.deepEqual(
+    rows.map((row) => Number(row[3])),
+    arrays.mean.data,
+  );
 });
 
 test('a map as CSV has a row for every point, and nothing where nothing is', async () => {
   const { arrays } = await read(site, `/v1/views/${view.id}/statistics`);
   const { rows } = columnsOf((await saved('rms-map', 'CSV')).bytes.toString());
 
-  assert.deepEqual(rows.map((row) => (row[2] === '' ? null : Number(row[2]))), arrays.rms_map.data);
+  assert.deepEqual(
+    rows.map((row) => (row[2] === '' ? null : Number(row[2]))),
+    arrays.rms_map.data,
+  );
 });
 
 test('copying puts the same CSV on the clipboard', async () => {
@@ -87,18 +103,21 @@ test('every plot gives a PNG at twice its size, with its provenance inside and w
     assert.equal(bytes.toString('hex', 0, 8), '89504e470d0a1a0a', figure);
     assert.ok(bytes.readUInt32BE(16) >= 1000, `${figure} is ${bytes.readUInt32BE(16)} wide`);
     assert.ok(bytes.includes(Buffer.from('/v1/')), figure);
-    const { corner, colours } = await page.evaluate(async (address) => {
-      const image = new Image();
-      image.src = address;
-      await image.decode();
-      const canvas = document.createElement('canvas');
-      canvas.width = image.width;
-      canvas.height = image.height;
-      const context = canvas.getContext('2d');
-      context.drawImage(image, 0, 0);
-      const { data } = context.getImageData(0, 0, canvas.width, canvas.height);
-      return { corner: [...data.subarray(0, 4)], colours: new Set(new Uint32Array(data.buffer)).size };
-    }, `data:image/png;base64,${bytes.toString('base64')}`);
+    const { corner, colours } = await page.evaluate(
+      async (address) => {
+        const image = new Image();
+        image.src = address;
+        await image.decode();
+        const canvas = document.createElement('canvas');
+        canvas.width = image.width;
+        canvas.height = image.height;
+        const context = canvas.getContext('2d');
+        context.drawImage(image, 0, 0);
+        const { data } = context.getImageData(0, 0, canvas.width, canvas.height);
+        return { corner: [...data.subarray(0, 4)], colours: new Set(new Uint32Array(data.buffer)).size };
+      },
+      `data:image/png;base64,${bytes.toString('base64')}`,
+    );
     assert.deepEqual(corner, [255, 255, 255, 255], figure);
     assert.ok(colours > 20, `${figure} holds ${colours} colours`);
   }
@@ -107,7 +126,14 @@ test('every plot gives a PNG at twice its size, with its provenance inside and w
 test('every plot gives an SVG that an XML parser takes, with its unit and provenance in it', async () => {
   for (const figure of figures) {
     const { name, bytes } = await saved(figure, 'SVG');
-    const told = execFileSync('/usr/bin/python3', ['-c', 'import sys, xml.dom.minidom as m; d = m.parse(sys.stdin); print(d.documentElement.tagName, len(d.getElementsByTagName("path")))'], { input: bytes }).toString();
+    const told = execFileSync(
+      '/usr/bin/python3',
+      [
+        '-c',
+        'import sys, xml.dom.minidom as m; d = m.parse(sys.stdin); print(d.documentElement.tagName, len(d.getElementsByTagName("path")))',
+      ],
+      { input: bytes },
+    ).toString();
 
     assert.match(told, /^svg [1-9]/, figure);
     assert.ok(bytes.toString().includes('/v1/') && bytes.toString().includes('µm'), figure);
@@ -122,7 +148,12 @@ test('the whole array comes from the server as NPY, and the whole result as HDF5
   const { shape, data } = parseNpy(npy.buffer.slice(npy.byteOffset, npy.byteOffset + npy.byteLength));
 
   assert.deepEqual(shape, arrays.rms_map.shape);
-  assert.deepEqual([...data].map((value) => (Number.isNaN(value) ? null : value)), arrays.rms_map.data.map((value) => (value === null ? null : data instanceof Float32Array ? Math.fround(value) : value)));
+  assert.deepEqual(
+    [...data].map((value) => (Number.isNaN(value) ? null : value)),
+    arrays.rms_map.data.map((value) =>
+      value === null ? null : data instanceof Float32Array ? Math.fround(value) : value,
+    ),
+  );
   assert.equal((await saved('rms-map', 'Whole result as HDF5')).bytes.toString('latin1', 1, 4), 'HDF');
 });
 
@@ -131,9 +162,13 @@ test('the Python call gives the numbers that are drawn', async () => {
   const script = await page.getByLabel('Python', { exact: true }).innerText();
   const { arrays } = await read(site, `/v1/views/${view.id}/statistics`);
 
-  const printed = execFileSync('/usr/bin/python3', ['-c', `${script}\nprint(json.dumps([list(rms_map.shape), float(np.nansum(rms_map))]))`]).toString();
+  const printed = execFileSync('/usr/bin/python3', [
+    '-c',
+    `${script}\nprint(json.dumps([list(rms_map.shape), float(np.nansum(rms_map))]))`,
+  ]).toString();
 
-  const [shape, sum] = JSON.parse(printed), expected = arrays.rms_map.data.reduce((total, value) => total + (value ?? 0), 0);
+  const [shape, sum] = JSON.parse(printed),
+    expected = arrays.rms_map.data.reduce((total, value) => total + (value ?? 0), 0);
   assert.deepEqual(shape, arrays.rms_map.shape);
   assert.ok(Math.abs(sum - expected) <= 1e-12 * Math.abs(expected) * arrays.rms_map.data.length);
 });
@@ -154,5 +189,8 @@ test('on paper there are the plots and where they came from, and nothing to pres
   await page.emulateMedia({ media: 'print' });
 
   assert.equal(await page.locator('button:visible, select:visible, input:visible').count(), 0);
-  assert.match(await page.locator('[data-name=series] .print-source').innerText(), /\/v1\/views\/.*\/series[\s\S]*digest/);
+  assert.match(
+    await page.locator('[data-name=series] .print-source').innerText(),
+    /\/v1\/views\/.*\/series[\s\S]*digest/,
+  );
 });

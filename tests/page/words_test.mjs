@@ -2,14 +2,26 @@
 
 import { test } from 'node:test';
 import assert from 'node:assert/strict';
-import { bytesText, intervalText, numberText, percentText, plainNumber, statedText, steppedText, waitText, wholeText } from '../../client-web/source/numbers.js';
+import {
+  bytesText,
+  intervalText,
+  numberText,
+  percentText,
+  plainNumber,
+  statedText,
+  steppedText,
+  waitText,
+  wholeText,
+} from '../../client-web/source/numbers.js';
 import { unitMeaning, unitText, withUnit } from '../../client-web/source/units.js';
 import { angleText, labelOf, seriesQuantities } from '../../client-web/source/quantities.js';
 import { formatRemoval, parseRemoval, removalText } from '../../client-web/source/removal.js';
 
 test('significant figures, a true minus sign and powers of ten', () => {
-  assert.deepEqual([0.18432, -12.3456, 0, 1234567, 2.5e-8, NaN, null].map((value) => numberText(value, 3)),
-    ['0.184', '−12.3', '0', '1.23\u2009×\u200910⁶', '2.50\u2009×\u200910⁻⁸', 'no value', 'no value']);
+  assert.deepEqual(
+    [0.18432, -12.3456, 0, 1234567, 2.5e-8, NaN, null].map((value) => numberText(value, 3)),
+    ['0.184', '−12.3', '0', '1.23\u2009×\u200910⁶', '2.50\u2009×\u200910⁻⁸', 'no value', 'no value'],
+  );
 });
 
 test('rounding that adds a digit keeps the figures', () => {
@@ -18,17 +30,32 @@ test('rounding that adds a digit keeps the figures', () => {
 });
 
 test('whole numbers are grouped from five digits on and never rounded', () => {
-  assert.deepEqual([2000, 100000, 9007199254740991].map(wholeText), ['2000', '100\u2009000', '9\u2009007\u2009199\u2009254\u2009740\u2009991']);
+  assert.deepEqual([2000, 100000, 9007199254740991].map(wholeText), [
+    '2000',
+    '100\u2009000',
+    '9\u2009007\u2009199\u2009254\u2009740\u2009991',
+  ]);
 });
 
 test('a value has the decimals of its uncertainty', () => {
-  assert.deepEqual(intervalText({ value: 0.184273, low: 0.17912, high: 0.18944 }), { value: '0.1843', low: '0.1791', high: '0.1894' });
-  assert.deepEqual(intervalText({ value: 1234.56, low: 1200, high: 1270 }), { value: '1235', low: '1200', high: '1270' });
+  assert.deepEqual(intervalText({ value: 0.184273, low: 0.17912, high: 0.18944 }), {
+    value: '0.1843',
+    low: '0.1791',
+    high: '0.1894',
+  });
+  assert.deepEqual(intervalText({ value: 1234.56, low: 1200, high: 1270 }), {
+    value: '1235',
+    low: '1200',
+    high: '1270',
+  });
   assert.equal(intervalText({ value: 0.5 }).low, null);
 });
 
 test('what was stated is shown as it was stated', () => {
-  assert.deepEqual([0.45, 100, 5.32e-7, 1.5].map((value) => statedText(value)), ['0.45', '100', '5.32\u2009×\u200910⁻⁷', '1.5']);
+  assert.deepEqual(
+    [0.45, 100, 5.32e-7, 1.5].map((value) => statedText(value)),
+    ['0.45', '100', '5.32\u2009×\u200910⁻⁷', '1.5'],
+  );
   assert.equal(percentText(0.95), '95\u00a0%');
 });
 
@@ -47,7 +74,16 @@ test('bytes in binary units, waits in words', () => {
 });
 
 test('units of the service become those of people', () => {
-  assert.deepEqual(['um', 'um2/Hz', 'm/s', '1', 'kg/m3', 'waves', 'deg', '1/m'].map(unitText), ['µm', 'µm²/Hz', 'm/s', '', 'kg/m³', 'waves', '°', '1/m']);
+  assert.deepEqual(['um', 'um2/Hz', 'm/s', '1', 'kg/m3', 'waves', 'deg', '1/m'].map(unitText), [
+    'µm',
+    'µm²/Hz',
+    'm/s',
+    '',
+    'kg/m³',
+    'waves',
+    '°',
+    '1/m',
+  ]);
   assert.equal(withUnit('OPD', 'um'), 'OPD (µm)');
   assert.equal(withUnit('Skewness', '1'), 'Skewness');
 });

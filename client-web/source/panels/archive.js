@@ -10,7 +10,7 @@ import { changed, emptyState, formatState, withRun } from '../view_state.js';
 import { fieldModel, readingText } from './parts/field_model.js';
 import { raysPicture } from './parts/rays.js';
 
-const mostPictures = 24;  // each is a question over all views of a run
+const mostPictures = 24; // each is a question over all views of a run
 
 const range = (ends, unit) => {
   if (!ends || ends.low === null || ends.low === undefined) return null;
@@ -23,21 +23,38 @@ function facts(run) {
     ['Viewing angles', String(run.views)],
     ['Azimuth', range(run.azimuth_deg, '°')],
     ['Elevation', range(run.elevation_deg, '°')],
-    ['Mach', run.mach === null || run.mach === undefined ? null : typeof run.mach === 'object' ? range(run.mach, '') : statedText(run.mach)],
+    [
+      'Mach',
+      run.mach === null || run.mach === undefined
+        ? null
+        : typeof run.mach === 'object'
+          ? range(run.mach, '')
+          : statedText(run.mach),
+    ],
   ];
-  return element('dl', { class: 'facts' }, list.filter(([, value]) => value).map(([name, value]) => element('div', {}, element('dt', {}, name), element('dd', {}, value))));
+  return element(
+    'dl',
+    { class: 'facts' },
+    list
+      .filter(([, value]) => value)
+      .map(([name, value]) => element('div', {}, element('dt', {}, name), element('dd', {}, value))),
+  );
 }
 
 function runCard(run, state) {
   const href = `?${formatState(withRun(changed(state, { campaign: run.campaign }), run.id))}`;
   return element(
-    'li', { class: 'run-card' },
+    'li',
+    { class: 'run-card' },
     element('div', { class: 'run-picture', data: { run: run.id } }),
-    element('div', { class: 'run-text' },
+    element(
+      'div',
+      { class: 'run-text' },
       element('h3', {}, element('a', { href, 'data-link': true }, run.name ?? run.id)),
       run.source && element('p', { class: 'source' }, run.source),
       facts(run),
-      element('p', { class: 'run-range', data: { range: run.id } })),
+      element('p', { class: 'run-range', data: { range: run.id } }),
+    ),
   );
 }
 
@@ -48,8 +65,15 @@ export function mount(root, { api }) {
   const list = element('div', { class: 'campaigns' });
   const legend = element('p', { class: 'note archive-legend' });
   root.append(
-    element('header', { class: 'opening' }, element('div', {}, element('h1', { tabindex: -1 }, 'What the archive holds'), lead), raysPicture()),
-    faceHost, list, legend,
+    element(
+      'header',
+      { class: 'opening' },
+      element('div', {}, element('h1', { tabindex: -1 }, 'What the archive holds'), lead),
+      raysPicture(),
+    ),
+    faceHost,
+    list,
+    legend,
   );
   const host = {
     showFace: (face) => faceHost.replaceChildren(...(face ? [face] : [])),
@@ -63,11 +87,31 @@ export function mount(root, { api }) {
   function campaignSection(campaign, runs, state) {
     const name = campaign.name ?? campaign.id;
     return element(
-      'section', { class: 'campaign', 'aria-label': `Campaign ${name}` },
-      element('div', { class: 'campaign-head' },
-        element('h2', {}, element('a', { href: `?${formatState(changed(emptyState, { campaign: campaign.id }))}`, 'data-link': true }, name)),
-        element('p', {}, `${countText(campaign.runs ?? runs.length, 'run')}, ${countText(campaign.views ?? 0, 'viewing angle')}`)),
-      element('ul', { class: 'run-cards' }, runs.map((run) => runCard(run, state))),
+      'section',
+      { class: 'campaign', 'aria-label': `Campaign ${name}` },
+      element(
+        'div',
+        { class: 'campaign-head' },
+        element(
+          'h2',
+          {},
+          element(
+            'a',
+            { href: `?${formatState(changed(emptyState, { campaign: campaign.id }))}`, 'data-link': true },
+            name,
+          ),
+        ),
+        element(
+          'p',
+          {},
+          `${countText(campaign.runs ?? runs.length, 'run')}, ${countText(campaign.views ?? 0, 'viewing angle')}`,
+        ),
+      ),
+      element(
+        'ul',
+        { class: 'run-cards' },
+        runs.map((run) => runCard(run, state)),
+      ),
     );
   }
 
@@ -93,9 +137,12 @@ export function mount(root, { api }) {
       const known = extent(model.views.map(({ value }) => value));
       if (!known) continue;
       const [low, high] = whole;
-      list.querySelector(`[data-run="${CSS.escape(id)}"]`)?.replaceChildren(fieldThumbnail({ ...model, low, high }, { width: 216, height: 132 }));
+      list
+        .querySelector(`[data-run="${CSS.escape(id)}"]`)
+        ?.replaceChildren(fieldThumbnail({ ...model, low, high }, { width: 216, height: 132 }));
       const range = list.querySelector(`[data-range="${CSS.escape(id)}"]`);
-      if (range) range.textContent = `OPD_rms ${numberText(known[0], 3)} to ${readingText(known[1], null, null, model.unit)}`;
+      if (range)
+        range.textContent = `OPD_rms ${numberText(known[0], 3)} to ${readingText(known[1], null, null, model.unit)}`;
     }
     const [first] = models.values();
     legend.textContent = `The maps show OPD_rms, mean over time, over azimuth and elevation, all on one scale: from ${numberText(whole[0], 3)} (dark) to ${readingText(whole[1], null, null, first.unit)} (light).`;
@@ -105,17 +152,37 @@ export function mount(root, { api }) {
     const wanted = state.campaign ? campaigns.filter(({ id }) => id === state.campaign) : campaigns;
     if (campaigns.length === 0) {
       lead.textContent = 'No view is indexed yet.';
-      list.replaceChildren(emptyFace('Nothing here yet', 'While indexing runs, views appear as they are read; the state is shown at the top right. ',
-        'Otherwise point the service at a folder of wavefront files: ', element('code', {}, 'bentlight serve --archive DIR --state DIR')));
+      list.replaceChildren(
+        emptyFace(
+          'Nothing here yet',
+          'While indexing runs, views appear as they are read; the state is shown at the top right. ',
+          'Otherwise point the service at a folder of wavefront files: ',
+          element('code', {}, 'bentlight serve --archive DIR --state DIR'),
+        ),
+      );
       return;
     }
     if (wanted.length === 0) {
-      list.replaceChildren(emptyFace('No such campaign', `The archive holds no campaign ${state.campaign}. `, element('a', { href: '?', 'data-link': true }, 'Show all campaigns')));
+      list.replaceChildren(
+        emptyFace(
+          'No such campaign',
+          `The archive holds no campaign ${state.campaign}. `,
+          element('a', { href: '?', 'data-link': true }, 'Show all campaigns'),
+        ),
+      );
       return;
     }
     const views = campaigns.reduce((sum, campaign) => sum + (campaign.views ?? 0), 0);
     lead.textContent = `${countText(campaigns.length, 'campaign')}, ${countText(runs.length, 'run')}, ${countText(views, 'viewing angle')}. Choose a run to see its field of regard.`;
-    list.replaceChildren(...wanted.map((campaign) => campaignSection(campaign, runs.filter((run) => run.campaign === campaign.id || run.campaign === campaign.name), state)));
+    list.replaceChildren(
+      ...wanted.map((campaign) =>
+        campaignSection(
+          campaign,
+          runs.filter((run) => run.campaign === campaign.id || run.campaign === campaign.name),
+          state,
+        ),
+      ),
+    );
     addPictures(runs.filter((run) => list.querySelector(`[data-run="${CSS.escape(run.id)}"]`)));
   }
 

@@ -17,8 +17,10 @@ import { fieldModel, readingText } from './parts/field_model.js';
 function findingOf(model, result) {
   const known = model.views.filter(({ value }) => value !== null);
   if (known.length === 0) return 'No view of this run has a value.';
-  const least = known.reduce((a, b) => (b.value < a.value ? b : a)), greatest = known.reduce((a, b) => (b.value > a.value ? b : a));
-  const text = ({ value, azimuth, elevation }) => `${readingText(value, null, null, model.unit)} at ${azimuth}°, ${elevation}°`;
+  const least = known.reduce((a, b) => (b.value < a.value ? b : a)),
+    greatest = known.reduce((a, b) => (b.value > a.value ? b : a));
+  const text = ({ value, azimuth, elevation }) =>
+    `${readingText(value, null, null, model.unit)} at ${azimuth}°, ${elevation}°`;
   const missing = result.arrays.value.data.length - known.length;
   return `Least ${text(least)}; greatest ${text(greatest)} (azimuth, elevation).${missing ? ` ${countText(missing, 'view')} without a value.` : ''}`;
 }
@@ -32,7 +34,12 @@ function tableOf(result) {
       { name: 'azimuth', unit: 'deg', values: azimuth.data },
       { name: 'elevation', unit: 'deg', values: elevation.data },
       { name: 'value', unit: value.unit, values: value.data },
-      ...(low ? [{ name: 'low', unit: value.unit, values: low.data }, { name: 'high', unit: value.unit, values: high.data }] : []),
+      ...(low
+        ? [
+            { name: 'low', unit: value.unit, values: low.data },
+            { name: 'high', unit: value.unit, values: high.data },
+          ]
+        : []),
     ],
   };
 }
@@ -41,8 +48,11 @@ export function mount(root, { api, go, place }) {
   const isSmall = place === 'rail';
   const figure = createFigure({ name: 'field-of-regard', title: 'Field of regard' });
   root.append(figure.root);
-  const quantity = element('select', { name: 'field', on: { change: () => go({ field: quantity.value, field_limits: null }) } },
-    fieldQuantities.map((name) => element('option', { value: name }, labelOf(name))));
+  const quantity = element(
+    'select',
+    { name: 'field', on: { change: () => go({ field: quantity.value, field_limits: null }) } },
+    fieldQuantities.map((name) => element('option', { value: name }, labelOf(name))),
+  );
   const limits = limitControls({ name: 'field_limits', go, isSymmetric: false });
   if (isSmall) figure.setTitle('Viewing angles');
   else figure.controls.append(element('label', {}, element('span', {}, 'Quantity'), quantity), limits.root);
@@ -62,20 +72,36 @@ export function mount(root, { api, go, place }) {
     model = fieldModel(answer.result, { state, checks });
     map.draw(model, state.view);
     limits.show(state.field_limits, [model.low, model.high]);
-    if (model.views.length === 0) figure.showFace(emptyFace('No viewing angles', 'The views of this run state no azimuth and elevation. ', 'They can be opened by their address, and are listed at /v1/views.'));
+    if (model.views.length === 0)
+      figure.showFace(
+        emptyFace(
+          'No viewing angles',
+          'The views of this run state no azimuth and elevation. ',
+          'They can be opened by their address, and are listed at /v1/views.',
+        ),
+      );
     figure.setFinding(isSmall ? '' : findingOf(model, answer.result));
     figure.setWarnings(isSmall ? [] : answer.result.warnings);
     figure.setOffer({
-      answer, what: state.field, arrays: Object.keys(answer.result.arrays),
+      answer,
+      what: state.field,
+      arrays: Object.keys(answer.result.arrays),
       table: () => tableOf(answer.result),
-      drawing: () => ({ width: 860, height: 460, nodes: fieldNodes(model, { width: 860, height: 460, palette: paperPalette }), title: `${labelOf(state.field)} over the field of regard of ${answer.result.subject}`, palette: paperPalette }),
+      drawing: () => ({
+        width: 860,
+        height: 460,
+        nodes: fieldNodes(model, { width: 860, height: 460, palette: paperPalette }),
+        title: `${labelOf(state.field)} over the field of regard of ${answer.result.subject}`,
+        palette: paperPalette,
+      }),
     });
   }
 
   return {
     update(next, { run }) {
       state = next;
-      if (!fieldQuantities.includes(state.field)) quantity.append(element('option', { value: state.field }, labelOf(state.field)));
+      if (!fieldQuantities.includes(state.field))
+        quantity.append(element('option', { value: state.field }, labelOf(state.field)));
       quantity.value = state.field;
       // A map over many records has no use for one record's window in seconds; it stays, as the server can judge it.
       const path = address(api.runPath(run.id, 'field-of-regard'), { quantity: state.field, ...preparation(state) });

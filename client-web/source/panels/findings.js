@@ -21,10 +21,17 @@ function valueItem({ title }, value, isFirst) {
   const level = value.level ? `${percentText(value.level)} interval` : 'interval';
   const hasInterval = text.low !== null && value.low !== null && value.low !== undefined;
   return element(
-    'div', { class: isFirst ? 'finding-item is-first' : 'finding-item' },
+    'div',
+    { class: isFirst ? 'finding-item is-first' : 'finding-item' },
     element('dt', {}, title),
-    element('dd', {}, element('span', { class: 'number' }, text.value), unitText(value.unit) && element('span', { class: 'unit' }, `\u00a0${unitText(value.unit)}`)),
-    hasInterval && element('dd', { class: 'interval' }, `${text.low} to ${text.high}`, element('span', {}, ` · ${level}`)),
+    element(
+      'dd',
+      {},
+      element('span', { class: 'number' }, text.value),
+      unitText(value.unit) && element('span', { class: 'unit' }, `\u00a0${unitText(value.unit)}`),
+    ),
+    hasInterval &&
+      element('dd', { class: 'interval' }, `${text.low} to ${text.high}`, element('span', {}, ` · ${level}`)),
   );
 }
 
@@ -44,17 +51,23 @@ export function mount(root, { api }) {
   return {
     update(state, { view }) {
       const path = statisticsPath(api, state, view);
-      question.put(path, (options) => api.answer(path, options), ({ result }) => {
-        const known = shownValues.filter(({ name }) => Number.isFinite(result.values[name]?.value));
-        list.replaceChildren(...known.map((entry, i) => valueItem(entry, result.values[entry.name], i === 0)));
-        const frames = result.values.frames?.value ?? result.provenance.frames;
-        const meaning = unitMeaning(state.length_unit, view.conditions);
-        note.textContent = [
-          removalText(state.remove).replace(/^./, (letter) => letter.toUpperCase()),
-          frames ? `${wholeText(frames)} frames` : null,
-          meaning,
-        ].filter(Boolean).join(' · ');
-      });
+      question.put(
+        path,
+        (options) => api.answer(path, options),
+        ({ result }) => {
+          const known = shownValues.filter(({ name }) => Number.isFinite(result.values[name]?.value));
+          list.replaceChildren(...known.map((entry, i) => valueItem(entry, result.values[entry.name], i === 0)));
+          const frames = result.values.frames?.value ?? result.provenance.frames;
+          const meaning = unitMeaning(state.length_unit, view.conditions);
+          note.textContent = [
+            removalText(state.remove).replace(/^./, (letter) => letter.toUpperCase()),
+            frames ? `${wholeText(frames)} frames` : null,
+            meaning,
+          ]
+            .filter(Boolean)
+            .join(' · ');
+        },
+      );
     },
     refresh() {
       question.reset();

@@ -15,7 +15,7 @@ import { createQuestion } from '../question.js';
 import { quantityText, unitText } from '../units.js';
 import { preparation } from '../view_state.js';
 
-const blockBytes = 8 * 1024 * 1024;  // of one reply of frames; a second of playing at 512 by 512 points
+const blockBytes = 8 * 1024 * 1024; // of one reply of frames; a second of playing at 512 by 512 points
 const mostFrames = 240;
 
 /** Window parameters choose frames here, so those of the preparation stay out. */
@@ -30,19 +30,24 @@ export function mount(root, { api, go }) {
   const transport = fromTemplate('transport');
   figure.transport.append(transport);
   const find = (selector) => part(transport, selector, 'panel frames');
-  const back = find('.step-back'), forward = find('.step-forward'), play = find('.play'), slider = find('.frame-slider');
-  const label = find('.frame-label'), speed = find('.speed');
+  const back = find('.step-back'),
+    forward = find('.step-forward'),
+    play = find('.play'),
+    slider = find('.frame-slider');
+  const label = find('.frame-label'),
+    speed = find('.speed');
   const limits = limitControls({ name: 'frame_limit', go, isSymmetric: true });
   figure.controls.append(limits.root);
   if (matchMedia('(prefers-reduced-motion: reduce)').matches) speed.value = '2';
 
-  let state = null, view = null;
-  let look = null;       // axes, unit and mask of the frames, from the last whole answer
-  let block = null;      // {key, first, times, frames: Float32Array, points}
-  let coming = null;     // promise of the next block
-  let position = 0;      // in the block
+  let state = null,
+    view = null;
+  let look = null; // axes, unit and mask of the frames, from the last whole answer
+  let block = null; // {key, first, times, frames: Float32Array, points}
+  let coming = null; // promise of the next block
+  let position = 0; // in the block
   let autoLimit = 0;
-  let playing = 0;       // number of the playing that goes on; another number ends it
+  let playing = 0; // number of the playing that goes on; another number ends it
   let leaving = new AbortController();
 
   const map = heatMap(figure.picture, {
@@ -65,8 +70,16 @@ export function mount(root, { api, go }) {
   }
 
   const model = () => ({
-    values: values(), rows: look.rows, columns: look.columns, x: look.x, y: look.y, axisUnit: look.axisUnit,
-    map: diverging, low: -limit(), high: limit(), barTitle: unitText(look.unit) || 'OPD',
+    values: values(),
+    rows: look.rows,
+    columns: look.columns,
+    x: look.x,
+    y: look.y,
+    axisUnit: look.axisUnit,
+    map: diverging,
+    low: -limit(),
+    high: limit(),
+    barTitle: unitText(look.unit) || 'OPD',
   });
 
   function showPosition() {
@@ -82,7 +95,11 @@ export function mount(root, { api, go }) {
     map.draw(model());
     limits.show(state.frame_limit, [-limit(), limit()]);
     const range = extent(values());
-    figure.setFinding(range ? `OPD from ${numberText(range[0], 3)} to ${quantityText(numberText(range[1], 3), look.unit)}; longer path is positive.` : 'No point of this frame has a value.');
+    figure.setFinding(
+      range
+        ? `OPD from ${numberText(range[0], 3)} to ${quantityText(numberText(range[1], 3), look.unit)}; longer path is positive.`
+        : 'No point of this frame has a value.',
+    );
     showPosition();
   }
 
@@ -99,14 +116,30 @@ export function mount(root, { api, go }) {
     look = { rows, columns, x: x.data, y: y.data, axisUnit: x.unit, unit: frames.unit };
     if (!covers(frame.data[0])) {
       if (block?.key !== key()) autoLimit = 0;
-      takeBlock({ key: key(), first: frame.data[0], times: time.data, frames: Float32Array.from(frames.data, (value) => value ?? NaN), points: rows * columns });
+      takeBlock({
+        key: key(),
+        first: frame.data[0],
+        times: time.data,
+        frames: Float32Array.from(frames.data, (value) => value ?? NaN),
+        points: rows * columns,
+      });
       position = 0;
     }
     drawWhole();
     figure.setWarnings(answer.result.warnings);
     figure.setOffer({
-      answer, what: `frame-${frame.data[0]}`, arrays: ['frames', 'time', 'x', 'y'],
-      table: () => mapTable({ name: 'opd', unit: look.unit, axisUnit: look.axisUnit, x: look.x, y: look.y, values: [...values()] }),
+      answer,
+      what: `frame-${frame.data[0]}`,
+      arrays: ['frames', 'time', 'x', 'y'],
+      table: () =>
+        mapTable({
+          name: 'opd',
+          unit: look.unit,
+          axisUnit: look.axisUnit,
+          x: look.x,
+          y: look.y,
+          values: [...values()],
+        }),
       drawing: () => {
         const { nodes, height } = mapNodes(model(), { width: 560, palette: paperPalette });
         return { width: 560, height, nodes, title: `Wavefront, ${label.textContent}`, palette: paperPalette };
@@ -116,7 +149,8 @@ export function mount(root, { api, go }) {
 
   /** True when the block in hand holds the frame of this number; then it becomes the position. */
   function covers(number) {
-    if (!block || block.key !== key() || number < block.first || number >= block.first + block.times.length) return false;
+    if (!block || block.key !== key() || number < block.first || number >= block.first + block.times.length)
+      return false;
     position = number - block.first;
     return true;
   }
@@ -129,17 +163,26 @@ export function mount(root, { api, go }) {
     return Math.min(view.frames - 1, Math.max(0, start || 0));
   }
 
-  const framesPerBlock = () => Math.max(2, Math.min(mostFrames, Math.floor(blockBytes / (4 * view.rows * view.columns))));
+  const framesPerBlock = () =>
+    Math.max(2, Math.min(mostFrames, Math.floor(blockBytes / (4 * view.rows * view.columns))));
 
   /** Many frames from `first` on, in one reply of plain floats. */
   async function loadBlock(first) {
-    const wantedKey = key(), wanted = view;
+    const wantedKey = key(),
+      wanted = view;
     const last = Math.min(wanted.frames - 1, first + framesPerBlock() - 1);
-    const path = (array) => address(api.viewPath(wanted.id, 'frames'), { first, last, ...frameParameters(state), format: 'npy', array });
+    const path = (array) =>
+      address(api.viewPath(wanted.id, 'frames'), { first, last, ...frameParameters(state), format: 'npy', array });
     const options = { signal: leaving.signal };
     const frames = parseNpy((await api.npy(path('frames'), options)).buffer);
     const times = parseNpy((await api.npy(path('time'), options)).buffer);
-    return { key: wantedKey, first, times: times.data, frames: Float32Array.from(frames.data), points: frames.shape[1] * frames.shape[2] };
+    return {
+      key: wantedKey,
+      first,
+      times: times.data,
+      frames: Float32Array.from(frames.data),
+      points: frames.shape[1] * frames.shape[2],
+    };
   }
 
   /** Goes to a frame, with those about it in one reply when the block does not hold it. */
@@ -188,7 +231,7 @@ export function mount(root, { api, go }) {
   /** The block after the one in hand; asked for ahead of time, so that it is there when it is needed. */
   function nextBlock() {
     coming ??= loadBlock(block.first + block.times.length);
-    coming.catch(() => {});  // looked at where it is awaited
+    coming.catch(() => {}); // looked at where it is awaited
     return coming;
   }
 
@@ -213,7 +256,7 @@ export function mount(root, { api, go }) {
     setPlaying(true);
     try {
       if (frameNumber() >= view.frames - 1) await goToFrame(0);
-      for (let due = performance.now(); isCurrent() && (await advance(isCurrent)); ) {
+      for (let due = performance.now(); isCurrent() && (await advance(isCurrent));) {
         if (!isCurrent()) return;
         map.repaintValues(values());
         showPosition();
@@ -243,7 +286,11 @@ export function mount(root, { api, go }) {
 
   /** The frame that the state asks for, whole: with its warnings, its provenance and its address. */
   function ask() {
-    const path = address(api.viewPath(view.id, 'frames'), { first: wantedFrame(), last: wantedFrame(), ...frameParameters(state) });
+    const path = address(api.viewPath(view.id, 'frames'), {
+      first: wantedFrame(),
+      last: wantedFrame(),
+      ...frameParameters(state),
+    });
     question.put(path, (options) => api.answer(path, options), drawAnswer);
   }
   const askSoon = debounced(350, ask);

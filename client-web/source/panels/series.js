@@ -12,11 +12,15 @@ import { createQuestion } from '../question.js';
 import { quantityText, withUnit } from '../units.js';
 import { preparation } from '../view_state.js';
 
-const binChoices = [400, 800, 1200, 1600, 2400];  // few, so that windows of similar width share one cached answer
+const binChoices = [400, 800, 1200, 1600, 2400]; // few, so that windows of similar width share one cached answer
 
 /** Parameters of the question; a zoom narrows the window and leaves the preparation alone. */
 function parametersOf(state, columns) {
-  const parameters = { quantity: state.quantity, bins: binChoices.find((each) => each >= columns) ?? binChoices.at(-1), ...preparation(state) };
+  const parameters = {
+    quantity: state.quantity,
+    bins: binChoices.find((each) => each >= columns) ?? binChoices.at(-1),
+    ...preparation(state),
+  };
   if (state.zoom) {
     delete parameters.first;
     delete parameters.last;
@@ -58,15 +62,34 @@ export function mount(root, { api, go }) {
   const figure = createFigure({ name: 'series', title: 'Against time' });
   root.append(figure.root);
   const quantity = element('select', { name: 'quantity', on: { change: () => go({ quantity: quantity.value }) } });
-  const ends = ['from', 'to'].map((name) => element('input', { type: 'number', step: 'any', 'aria-label': `Shown ${name}, seconds`, on: { change: () => zoomByFields() } }));
+  const ends = ['from', 'to'].map((name) =>
+    element('input', {
+      type: 'number',
+      step: 'any',
+      'aria-label': `Shown ${name}, seconds`,
+      on: { change: () => zoomByFields() },
+    }),
+  );
   const whole = element('button', { type: 'button', on: { click: () => go({ zoom: null }) } }, 'Whole record');
   const use = element('button', { type: 'button', on: { click: () => useAsWindow() } }, 'Use as window');
   figure.controls.append(
     element('label', {}, element('span', {}, 'Quantity'), quantity),
-    element('span', { class: 'limits', role: 'group', 'aria-label': 'Stretch of time that is shown' }, element('span', { class: 'limits-label' }, 'Show'), ends[0], element('span', { 'aria-hidden': 'true' }, 'to'), ends[1], element('span', {}, 's')),
-    whole, use,
+    element(
+      'span',
+      { class: 'limits', role: 'group', 'aria-label': 'Stretch of time that is shown' },
+      element('span', { class: 'limits-label' }, 'Show'),
+      ends[0],
+      element('span', { 'aria-hidden': 'true' }, 'to'),
+      ends[1],
+      element('span', {}, 's'),
+    ),
+    whole,
+    use,
   );
-  let state = null, view = null, model = null, latest = null;
+  let state = null,
+    view = null,
+    model = null,
+    latest = null;
   const plot = linePlot(figure.picture, {
     height: 250,
     label: 'Against time. Arrow keys read values, plus and minus zoom, 0 shows all, Enter shows the frame.',
@@ -78,13 +101,19 @@ export function mount(root, { api, go }) {
   figure.setHint('Drag to zoom, double click for all of it; click to see the frame of that instant.');
   const question = createQuestion(api, figure);
 
-  const recordRange = () => [view.start_s ?? 0, (view.start_s ?? 0) + (view.duration_s ?? view.frames / view.frame_rate_hz)];
+  const recordRange = () => [
+    view.start_s ?? 0,
+    (view.start_s ?? 0) + (view.duration_s ?? view.frames / view.frame_rate_hz),
+  ];
 
   /** At least four frames wide, and inside the record. */
   function boundedZoom([low, high]) {
-    const least = 4 / view.frame_rate_hz, [start, end] = recordRange();
-    const middle = (low + high) / 2, half = Math.max(high - low, least) / 2;
-    const from = Math.max(start, middle - half), to = Math.min(end, middle + half);
+    const least = 4 / view.frame_rate_hz,
+      [start, end] = recordRange();
+    const middle = (low + high) / 2,
+      half = Math.max(high - low, least) / 2;
+    const from = Math.max(start, middle - half),
+      to = Math.min(end, middle + half);
     return to > from ? [rounded(from), rounded(to)] : null;
   }
 
@@ -127,9 +156,23 @@ export function mount(root, { api, go }) {
     const shown = state.zoom ?? [time.data[0], time.data.at(-1)];
     ends.forEach((input, i) => (input.value = String(Number(shown[i].toPrecision(6)))));
     figure.setOffer({
-      answer, what: state.quantity.replaceAll(':', '-'), arrays: ['time', 'low', 'high', 'mean'],
-      table: () => ({ columns: ['time', 'low', 'high', 'mean'].map((name) => ({ name, unit: answer.result.arrays[name].unit, values: answer.result.arrays[name].data })) }),
-      drawing: () => ({ width: 960, height: 340, nodes: lineNodes(model, { width: 960, height: 340, palette: paperPalette }), title: `${label} against time, ${answer.result.subject}`, palette: paperPalette }),
+      answer,
+      what: state.quantity.replaceAll(':', '-'),
+      arrays: ['time', 'low', 'high', 'mean'],
+      table: () => ({
+        columns: ['time', 'low', 'high', 'mean'].map((name) => ({
+          name,
+          unit: answer.result.arrays[name].unit,
+          values: answer.result.arrays[name].data,
+        })),
+      }),
+      drawing: () => ({
+        width: 960,
+        height: 340,
+        nodes: lineNodes(model, { width: 960, height: 340, palette: paperPalette }),
+        title: `${label} against time, ${answer.result.subject}`,
+        palette: paperPalette,
+      }),
     });
   }
 
@@ -159,7 +202,8 @@ export function mount(root, { api, go }) {
     const names = seriesQuantities(view);
     if (!names.includes(state.quantity)) names.push(state.quantity);
     const present = [...quantity.options].map(({ value }) => value);
-    if (present.join() !== names.join()) quantity.replaceChildren(...names.map((name) => element('option', { value: name }, labelOf(name))));
+    if (present.join() !== names.join())
+      quantity.replaceChildren(...names.map((name) => element('option', { value: name }, labelOf(name))));
     quantity.value = state.quantity;
   }
 

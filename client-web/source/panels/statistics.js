@@ -43,19 +43,49 @@ function apertureMap(kind, go) {
       const array = arrays[kind.array];
       const [rows, columns] = array.shape;
       const locked = state[kind.limitName];
-      const [low, high] = kind.isSymmetric ? (locked ? [-locked, locked] : symmetricLimits(array.data)) : locked ?? tightLimits(array.data);
+      const [low, high] = kind.isSymmetric
+        ? locked
+          ? [-locked, locked]
+          : symmetricLimits(array.data)
+        : (locked ?? tightLimits(array.data));
       model = {
-        values: array.data, rows, columns, x: arrays.x.data, y: arrays.y.data, axisUnit: arrays.x.unit, unit: array.unit,
-        map: kind.isSymmetric ? diverging : sequential, low, high, barTitle: unitText(array.unit) || kind.short,
+        values: array.data,
+        rows,
+        columns,
+        x: arrays.x.data,
+        y: arrays.y.data,
+        axisUnit: arrays.x.unit,
+        unit: array.unit,
+        map: kind.isSymmetric ? diverging : sequential,
+        low,
+        high,
+        barTitle: unitText(array.unit) || kind.short,
       };
       map.draw(model);
       limits.show(locked, [low, high]);
       const range = extent(array.data);
-      figure.setFinding(range ? kind.finding(range.map((value) => numberText(value, 3)), array.unit) : 'No point has a value.');
+      figure.setFinding(
+        range
+          ? kind.finding(
+              range.map((value) => numberText(value, 3)),
+              array.unit,
+            )
+          : 'No point has a value.',
+      );
       figure.setWarnings(warnings.filter(({ code }) => kind.warnings.test(code)));
       figure.setOffer({
-        answer, what: kind.array, arrays: [kind.array, 'x', 'y'],
-        table: () => mapTable({ name: kind.array, unit: array.unit, axisUnit: arrays.x.unit, x: model.x, y: model.y, values: model.values }),
+        answer,
+        what: kind.array,
+        arrays: [kind.array, 'x', 'y'],
+        table: () =>
+          mapTable({
+            name: kind.array,
+            unit: array.unit,
+            axisUnit: arrays.x.unit,
+            x: model.x,
+            y: model.y,
+            values: model.values,
+          }),
         drawing: () => {
           const { nodes, height } = mapNodes(model, { width: 560, palette: paperPalette });
           return { width: 560, height, nodes, title: `${kind.title}, ${answer.result.subject}`, palette: paperPalette };
@@ -67,11 +97,23 @@ function apertureMap(kind, go) {
 }
 
 const meanMap = {
-  name: 'mean-map', title: 'Steady lensing', short: 'OPD', array: 'mean_map', limitName: 'mean_limit', isSymmetric: true, warnings: /mean/,
+  name: 'mean-map',
+  title: 'Steady lensing',
+  short: 'OPD',
+  array: 'mean_map',
+  limitName: 'mean_limit',
+  isSymmetric: true,
+  warnings: /mean/,
   finding: ([low, high], unit) => `Time mean at each point, ${low} to ${quantityText(high, unit)}.`,
 };
 const rmsMap = {
-  name: 'rms-map', title: 'Fluctuation', short: 'rms', array: 'rms_map', limitName: 'rms_limits', isSymmetric: false, warnings: /rms_map|steady/,
+  name: 'rms-map',
+  title: 'Fluctuation',
+  short: 'rms',
+  array: 'rms_map',
+  limitName: 'rms_limits',
+  isSymmetric: false,
+  warnings: /rms_map|steady/,
   finding: ([low, high], unit) => `Rms over time at each point, ${low} to ${quantityText(high, unit)}.`,
 };
 
@@ -85,7 +127,12 @@ function distribution() {
   });
 
   function readingAt(bin) {
-    const { histogram_low: low, histogram_high: high, histogram_count: count, lognormal_count: fit } = latest.result.arrays;
+    const {
+      histogram_low: low,
+      histogram_high: high,
+      histogram_count: count,
+      lognormal_count: fit,
+    } = latest.result.arrays;
     const edges = `${numberText(low.data[bin], 4)} to ${quantityText(numberText(high.data[bin], 4), low.unit)}`;
     return `${edges}: ${wholeText(count.data[bin])} frames${fit ? `, ${numberText(fit.data[bin], 3)} by the fit` : ''}`;
   }
@@ -98,21 +145,42 @@ function distribution() {
       const { histogram_low: low, histogram_high: high, histogram_count: count, lognormal_count: fit } = arrays;
       if (!count) return figure.root.toggleAttribute('hidden', true);
       const model = {
-        low: low.data, high: high.data, count: count.data, fit: fit?.data ?? null,
-        xTitle: withUnit('OPD_rms', low.unit), yTitle: 'frames',
+        low: low.data,
+        high: high.data,
+        count: count.data,
+        fit: fit?.data ?? null,
+        xTitle: withUnit('OPD_rms', low.unit),
+        yTitle: 'frames',
         marks: values.opd_rms_mean ? [{ x: values.opd_rms_mean.value, name: 'mean' }] : [],
       };
       plot.draw(model);
       const distance = values.lognormal_ks_distance?.value;
-      figure.setFinding(fit && Number.isFinite(distance)
-        ? `Bars are frames, the dashed line a log-normal fit; they are at most ${percentText(distance, 2)} apart (Kolmogorov–Smirnov).`
-        : 'Bars are frames.');
+      figure.setFinding(
+        fit && Number.isFinite(distance)
+          ? `Bars are frames, the dashed line a log-normal fit; they are at most ${percentText(distance, 2)} apart (Kolmogorov–Smirnov).`
+          : 'Bars are frames.',
+      );
       figure.setWarnings(warnings.filter(({ code }) => /lognormal|histogram|distribution/.test(code)));
-      const columns = { histogram_low: low, histogram_high: high, histogram_count: count, ...(fit ? { lognormal_count: fit } : {}) };
+      const columns = {
+        histogram_low: low,
+        histogram_high: high,
+        histogram_count: count,
+        ...(fit ? { lognormal_count: fit } : {}),
+      };
       figure.setOffer({
-        answer, what: 'histogram', arrays: Object.keys(columns),
-        table: () => ({ columns: Object.entries(columns).map(([name, array]) => ({ name, unit: array.unit, values: array.data })) }),
-        drawing: () => ({ width: 720, height: 340, nodes: histogramNodes(model, { width: 720, height: 340, palette: paperPalette }), title: `Distribution of OPD_rms, ${answer.result.subject}`, palette: paperPalette }),
+        answer,
+        what: 'histogram',
+        arrays: Object.keys(columns),
+        table: () => ({
+          columns: Object.entries(columns).map(([name, array]) => ({ name, unit: array.unit, values: array.data })),
+        }),
+        drawing: () => ({
+          width: 720,
+          height: 340,
+          nodes: histogramNodes(model, { width: 720, height: 340, palette: paperPalette }),
+          title: `Distribution of OPD_rms, ${answer.result.subject}`,
+          palette: paperPalette,
+        }),
       });
     },
     repaint() {},
@@ -130,7 +198,12 @@ function convergence() {
   });
 
   function readingAt(index) {
-    const { convergence_frames: frames, convergence_mean: mean, convergence_low: low, convergence_high: high } = latest.result.arrays;
+    const {
+      convergence_frames: frames,
+      convergence_mean: mean,
+      convergence_low: low,
+      convergence_high: high,
+    } = latest.result.arrays;
     const text = intervalText({ value: mean.data[index], low: low.data[index], high: high.data[index] });
     return `after ${wholeText(frames.data[index])} frames: ${quantityText(text.value, mean.unit)}${text.low === null ? '' : ` (${text.low} to ${text.high})`}`;
   }
@@ -139,7 +212,12 @@ function convergence() {
     figure,
     draw(answer) {
       latest = answer;
-      const { convergence_frames: frames, convergence_mean: mean, convergence_low: low, convergence_high: high } = answer.result.arrays;
+      const {
+        convergence_frames: frames,
+        convergence_mean: mean,
+        convergence_low: low,
+        convergence_high: high,
+      } = answer.result.arrays;
       if (!frames || frames.data.length < 2) return figure.root.toggleAttribute('hidden', true);
       figure.root.hidden = false;
       const level = answer.result.values.opd_rms_mean?.level;
@@ -147,18 +225,42 @@ function convergence() {
         x: { values: Float64Array.from(frames.data), title: 'Frames so far' },
         y: { title: withUnit('OPD_rms, mean', mean.unit) },
         curves: [{ name: 'mean', values: mean.data }],
-        bands: low && high ? [{ name: level ? `${percentText(level)} interval` : 'interval', low: low.data, high: high.data }] : [],
+        bands:
+          low && high
+            ? [{ name: level ? `${percentText(level)} interval` : 'interval', low: low.data, high: high.data }]
+            : [],
       };
       plot.draw(model);
       const last = frames.data.length - 1;
       const change = Math.abs(mean.data[last] - mean.data[Math.floor(last / 2)]) / Math.abs(mean.data[last]);
-      figure.setFinding(`The mean over the frames so far${level ? `, with its ${percentText(level)} interval` : ''}; it moved by ${percentText(change, 2)} over the second half.`);
-      figure.setWarnings(answer.result.warnings.filter(({ code }) => /converge|stationar|effective|interval/.test(code)));
-      const columns = { convergence_frames: frames, convergence_mean: mean, convergence_low: low, convergence_high: high };
+      figure.setFinding(
+        `The mean over the frames so far${level ? `, with its ${percentText(level)} interval` : ''}; it moved by ${percentText(change, 2)} over the second half.`,
+      );
+      figure.setWarnings(
+        answer.result.warnings.filter(({ code }) => /converge|stationar|effective|interval/.test(code)),
+      );
+      const columns = {
+        convergence_frames: frames,
+        convergence_mean: mean,
+        convergence_low: low,
+        convergence_high: high,
+      };
       figure.setOffer({
-        answer, what: 'convergence', arrays: Object.keys(columns),
-        table: () => ({ columns: Object.entries(columns).filter(([, array]) => array).map(([name, array]) => ({ name, unit: array.unit, values: array.data })) }),
-        drawing: () => ({ width: 720, height: 340, nodes: lineNodes(model, { width: 720, height: 340, palette: paperPalette }), title: `Convergence of the mean of OPD_rms, ${answer.result.subject}`, palette: paperPalette }),
+        answer,
+        what: 'convergence',
+        arrays: Object.keys(columns),
+        table: () => ({
+          columns: Object.entries(columns)
+            .filter(([, array]) => array)
+            .map(([name, array]) => ({ name, unit: array.unit, values: array.data })),
+        }),
+        drawing: () => ({
+          width: 720,
+          height: 340,
+          nodes: lineNodes(model, { width: 720, height: 340, palette: paperPalette }),
+          title: `Convergence of the mean of OPD_rms, ${answer.result.subject}`,
+          palette: paperPalette,
+        }),
       });
     },
     repaint: () => plot.repaint(),
@@ -169,13 +271,18 @@ function convergence() {
 function valueRow(label, value) {
   const text = intervalText(value);
   const isWhole = Number.isInteger(value.value);
-  const interval = text.low !== null && value.low !== null && value.low !== undefined
-    ? `${text.low} to ${text.high}${value.level ? ` (${percentText(value.level)})` : ''}` : '';
-  return element('tr', {},
+  const interval =
+    text.low !== null && value.low !== null && value.low !== undefined
+      ? `${text.low} to ${text.high}${value.level ? ` (${percentText(value.level)})` : ''}`
+      : '';
+  return element(
+    'tr',
+    {},
     element('th', { scope: 'row' }, label),
     element('td', { title: plainNumber(value.value) }, isWhole ? wholeText(value.value) : text.value),
     element('td', {}, unitText(value.unit)),
-    element('td', {}, interval));
+    element('td', {}, interval),
+  );
 }
 
 /** All values, and the percentiles, as one table. */
@@ -188,13 +295,28 @@ function allValues() {
       const rows = Object.entries(values).map(([name, value]) => valueRow(labelOf(name), value));
       const { percent, percentiles, percentiles_low: lows, percentiles_high: highs } = arrays;
       const shares = (percent?.data ?? []).map((share, i) =>
-        valueRow(`${statedText(share)}\u00a0% of frames below`, { value: percentiles.data[i], low: lows?.data[i], high: highs?.data[i], unit: percentiles.unit }));
-      figure.picture.replaceChildren(element('div', { class: 'value-tables' },
-        valueTable('Values with their intervals', ['Value', 'Number', 'Unit', 'Interval'], rows),
-        shares.length ? valueTable('Percentiles of OPD_rms', ['OPD_rms', 'Number', 'Unit', 'Interval'], shares) : null));
+        valueRow(`${statedText(share)}\u00a0% of frames below`, {
+          value: percentiles.data[i],
+          low: lows?.data[i],
+          high: highs?.data[i],
+          unit: percentiles.unit,
+        }),
+      );
+      figure.picture.replaceChildren(
+        element(
+          'div',
+          { class: 'value-tables' },
+          valueTable('Values with their intervals', ['Value', 'Number', 'Unit', 'Interval'], rows),
+          shares.length
+            ? valueTable('Percentiles of OPD_rms', ['OPD_rms', 'Number', 'Unit', 'Interval'], shares)
+            : null,
+        ),
+      );
       figure.setWarnings(warnings);
       figure.setOffer({
-        answer, what: 'values', arrays: percentiles ? ['percent', 'percentiles'] : [],
+        answer,
+        what: 'values',
+        arrays: percentiles ? ['percent', 'percentiles'] : [],
         table: () => valuesTable(values),
         drawing: null,
       });
@@ -204,11 +326,26 @@ function allValues() {
   };
 }
 
-const valueTable = (caption, heads, rows) => element('div', { class: 'scroll', tabindex: 0, role: 'region', 'aria-label': caption },
-  element('table', { class: 'values' },
-    element('caption', { class: 'unseen' }, caption),
-    element('thead', {}, element('tr', {}, heads.map((head) => element('th', { scope: 'col' }, head)))),
-    element('tbody', {}, rows)));
+const valueTable = (caption, heads, rows) =>
+  element(
+    'div',
+    { class: 'scroll', tabindex: 0, role: 'region', 'aria-label': caption },
+    element(
+      'table',
+      { class: 'values' },
+      element('caption', { class: 'unseen' }, caption),
+      element(
+        'thead',
+        {},
+        element(
+          'tr',
+          {},
+          heads.map((head) => element('th', { scope: 'col' }, head)),
+        ),
+      ),
+      element('tbody', {}, rows),
+    ),
+  );
 
 function valuesTable(values) {
   const entries = Object.entries(values);
@@ -216,8 +353,11 @@ function valuesTable(values) {
   return {
     columns: [
       { name: 'name', unit: '', values: entries.map(([name]) => name) },
-      column('value', ({ value }) => value), { name: 'unit', unit: '', values: entries.map(([, { unit }]) => unit) },
-      column('low', ({ low }) => low), column('high', ({ high }) => high), column('level', ({ level }) => level),
+      column('value', ({ value }) => value),
+      { name: 'unit', unit: '', values: entries.map(([, { unit }]) => unit) },
+      column('low', ({ low }) => low),
+      column('high', ({ high }) => high),
+      column('level', ({ level }) => level),
     ],
   };
 }
@@ -236,7 +376,8 @@ export function mount(root, { api, go }) {
     setRefused: () => each((figure) => figure.setRefused()),
     hasPicture: () => parts[0].figure.hasPicture(),
   });
-  let latest = null, state = null;
+  let latest = null,
+    state = null;
   const draw = () => parts.forEach((piece) => piece.draw(latest, state));
 
   return {
@@ -244,10 +385,14 @@ export function mount(root, { api, go }) {
       const before = state;
       state = next;
       const path = statisticsPath(api, state, view);
-      question.put(path, (options) => api.answer(path, options), (answer) => {
-        latest = answer;
-        draw();
-      });
+      question.put(
+        path,
+        (options) => api.answer(path, options),
+        (answer) => {
+          latest = answer;
+          draw();
+        },
+      );
       const haveLimitsMoved = before && ['mean_limit', 'rms_limits'].some((name) => before[name] !== state[name]);
       if (haveLimitsMoved && latest?.path === path) draw();
     },

@@ -18,7 +18,8 @@ export function ticksFor([low, high], length, perTick = 70) {
 /** The axis below `box`. @param {Box} box */
 export function bottomAxis(box, scale, { ticks, labels }, title, palette) {
   return svg(
-    'g', { fill: palette.soft, 'text-anchor': 'middle', 'aria-hidden': 'true' },
+    'g',
+    { fill: palette.soft, 'text-anchor': 'middle', 'aria-hidden': 'true' },
     svg('path', { d: `M${box.left} ${box.bottom + 0.5}H${box.right}`, stroke: palette.rule, fill: 'none' }),
     ticks.map((tick, i) => [
       svg('path', { d: `M${scale.at(tick).toFixed(1)} ${box.bottom}v${tickLength}`, stroke: palette.rule }),
@@ -31,7 +32,8 @@ export function bottomAxis(box, scale, { ticks, labels }, title, palette) {
 /** The axis left of `box`, its title above it, where it is read without turning one's head. */
 export function leftAxis(box, scale, { ticks, labels }, title, palette, { grid = false } = {}) {
   return svg(
-    'g', { fill: palette.soft, 'text-anchor': 'end', 'aria-hidden': 'true' },
+    'g',
+    { fill: palette.soft, 'text-anchor': 'end', 'aria-hidden': 'true' },
     ticks.map((tick, i) => {
       const y = scale.at(tick).toFixed(1);
       return [
@@ -41,7 +43,12 @@ export function leftAxis(box, scale, { ticks, labels }, title, palette, { grid =
       ];
     }),
     svg('path', { d: `M${box.left - 0.5} ${box.top}V${box.bottom}`, stroke: palette.rule, fill: 'none' }),
-    title && svg('text', { x: box.left - 7, y: box.top - 9, fill: palette.ink, 'text-anchor': 'start', dx: -box.left + 9 }, title),
+    title &&
+      svg(
+        'text',
+        { x: box.left - 7, y: box.top - 9, fill: palette.ink, 'text-anchor': 'start', dx: -box.left + 9 },
+        title,
+      ),
   );
 }
 
@@ -57,15 +64,39 @@ export function colourBar(place, bar, palette, id) {
   const { ticks, labels } = ticksFor([bar.low, bar.high], place.bottom - place.top, 32);
   const steps = 32;
   const stops = Array.from({ length: steps + 1 }, (_, i) =>
-    svg('stop', { offset: `${((100 * i) / steps).toFixed(2)}%`, 'stop-color': hexColour(bar.map, Math.round((i * (tableSize - 1)) / steps)) }),
+    svg('stop', {
+      offset: `${((100 * i) / steps).toFixed(2)}%`,
+      'stop-color': hexColour(bar.map, Math.round((i * (tableSize - 1)) / steps)),
+    }),
   );
   const tip = (y, direction) => `M${place.x} ${y}h${width}l${-width / 2} ${direction * 8}Z`;
   return svg(
-    'g', { fill: palette.soft, 'aria-hidden': 'true' },
+    'g',
+    { fill: palette.soft, 'aria-hidden': 'true' },
     svg('defs', {}, svg('linearGradient', { id, x1: 0, x2: 0, y1: 1, y2: 0 }, stops)),
-    svg('rect', { x: place.x, y: place.top, width, height: place.bottom - place.top, fill: `url(#${id})`, stroke: palette.rule, 'stroke-width': 0.5 }),
-    bar.isCutHigh && svg('path', { d: tip(place.top - 2, -1), fill: hexColour(bar.map, tableSize - 1), stroke: palette.ink, 'stroke-width': 0.75 }),
-    bar.isCutLow && svg('path', { d: tip(place.bottom + 2, 1), fill: hexColour(bar.map, 0), stroke: palette.ink, 'stroke-width': 0.75 }),
+    svg('rect', {
+      x: place.x,
+      y: place.top,
+      width,
+      height: place.bottom - place.top,
+      fill: `url(#${id})`,
+      stroke: palette.rule,
+      'stroke-width': 0.5,
+    }),
+    bar.isCutHigh &&
+      svg('path', {
+        d: tip(place.top - 2, -1),
+        fill: hexColour(bar.map, tableSize - 1),
+        stroke: palette.ink,
+        'stroke-width': 0.75,
+      }),
+    bar.isCutLow &&
+      svg('path', {
+        d: tip(place.bottom + 2, 1),
+        fill: hexColour(bar.map, 0),
+        stroke: palette.ink,
+        'stroke-width': 0.75,
+      }),
     ticks.map((tick, i) => [
       svg('path', { d: `M${place.x + width} ${scale.at(tick).toFixed(1)}h3`, stroke: palette.rule }),
       svg('text', { x: place.x + width + 6, y: scale.at(tick).toFixed(1), dy: '0.35em' }, labels[i]),

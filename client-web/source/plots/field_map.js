@@ -29,7 +29,8 @@ function spacing(sorted, fallback) {
 
 /** Views on a full grid get touching cells, scattered ones get discs. @param {FieldView[]} views */
 function arrangement(views) {
-  const azimuths = distinct(views.map(({ azimuth }) => azimuth)), elevations = distinct(views.map(({ elevation }) => elevation));
+  const azimuths = distinct(views.map(({ azimuth }) => azimuth)),
+    elevations = distinct(views.map(({ elevation }) => elevation));
   const isGrid = azimuths.length * elevations.length <= 1.3 * views.length + 1;
   return { isGrid, cellWidth: spacing(azimuths, 10), cellHeight: spacing(elevations, 10) };
 }
@@ -54,25 +55,44 @@ function layoutOf(model, width, height) {
 /** Shape, number and mark of one view. */
 function viewNodes(model, layout, view, palette) {
   const { isGrid, cell, radius } = layout;
-  const x = layout.xs.at(view.azimuth), y = layout.ys.at(view.elevation);
+  const x = layout.xs.at(view.azimuth),
+    y = layout.ys.at(view.elevation);
   const isKnown = view.value !== null;
   const index = isKnown ? tableIndex(view.value, model.low, model.high) : 0;
   const look = isKnown
     ? { fill: hexColour(model.map, index) }
     : { fill: palette.sheet, stroke: palette.rule, 'stroke-dasharray': '3 3' };
   const shape = isGrid
-    ? svg('rect', { class: 'cell', x: (x - cell.width / 2).toFixed(1), y: (y - cell.height / 2).toFixed(1), width: cell.width.toFixed(1), height: cell.height.toFixed(1), rx: Math.min(3, cell.width / 6), ...look })
+    ? svg('rect', {
+        class: 'cell',
+        x: (x - cell.width / 2).toFixed(1),
+        y: (y - cell.height / 2).toFixed(1),
+        width: cell.width.toFixed(1),
+        height: cell.height.toFixed(1),
+        rx: Math.min(3, cell.width / 6),
+        ...look,
+      })
     : svg('circle', { class: 'cell', cx: x.toFixed(1), cy: y.toFixed(1), r: radius, ...look });
-  const dark = '#000000', light = '#ffffff';
+  const dark = '#000000',
+    light = '#ffffff';
   const contrast = !isKnown ? palette.soft : isLight(model.map, index) ? dark : light;
   const hasRoom = isGrid && cell.width >= 7.2 * view.short.length + 6 && cell.height >= 18;
   const corner = 9;
   return [
     shape,
-    hasRoom && svg('text', { x: x.toFixed(1), y: y.toFixed(1), dy: '0.35em', 'text-anchor': 'middle', fill: contrast }, view.short),
-    view.isFlawed && isGrid && cell.width > 16 && svg('path', {
-      d: `M${(x + cell.width / 2 - corner).toFixed(1)} ${(y - cell.height / 2).toFixed(1)}h${corner}v${corner}Z`, fill: contrast,
-    }),
+    hasRoom &&
+      svg(
+        'text',
+        { x: x.toFixed(1), y: y.toFixed(1), dy: '0.35em', 'text-anchor': 'middle', fill: contrast },
+        view.short,
+      ),
+    view.isFlawed &&
+      isGrid &&
+      cell.width > 16 &&
+      svg('path', {
+        d: `M${(x + cell.width / 2 - corner).toFixed(1)} ${(y - cell.height / 2).toFixed(1)}h${corner}v${corner}Z`,
+        fill: contrast,
+      }),
     view.isFlawed && !isGrid && svg('circle', { cx: x.toFixed(1), cy: y.toFixed(1), r: 2.5, fill: contrast }),
   ];
 }
@@ -86,10 +106,15 @@ function surroundings(model, layout, palette, id) {
     colourBar(
       { x: box.right + 14, top: box.top, bottom: box.bottom },
       {
-        map: model.map, low: model.low, high: model.high, title: model.barTitle,
-        isCutLow: outside.some((value) => value < model.low), isCutHigh: outside.some((value) => value > model.high),
+        map: model.map,
+        low: model.low,
+        high: model.high,
+        title: model.barTitle,
+        isCutLow: outside.some((value) => value < model.low),
+        isCutHigh: outside.some((value) => value > model.high),
       },
-      palette, id,
+      palette,
+      id,
     ),
   ];
 }
@@ -97,7 +122,10 @@ function surroundings(model, layout, palette, id) {
 /** The map as nodes for a file. @param {FieldModel} model */
 export function fieldNodes(model, { width, height, palette }) {
   const layout = layoutOf(model, width, height);
-  return [surroundings(model, layout, palette, 'bar'), model.views.map((view) => viewNodes(model, layout, view, palette))];
+  return [
+    surroundings(model, layout, palette, 'bar'),
+    model.views.map((view) => viewNodes(model, layout, view, palette)),
+  ];
 }
 
 /** A map without axes, as a small picture. @param {FieldModel} model */
@@ -105,15 +133,25 @@ export function fieldThumbnail(model, { width, height }) {
   const layout = layoutOf(model, width + margins.left + margins.right, height + margins.top + margins.bottom);
   return toElement(
     svg(
-      'svg', { viewBox: `${margins.left} ${margins.top} ${width} ${height}`, width, height, 'aria-hidden': 'true', class: 'thumbnail' },
-      model.views.map((view) => viewNodes(model, { ...layout }, { ...view, short: '', isFlawed: false }, livePalette)[0]),
+      'svg',
+      {
+        viewBox: `${margins.left} ${margins.top} ${width} ${height}`,
+        width,
+        height,
+        'aria-hidden': 'true',
+        class: 'thumbnail',
+      },
+      model.views.map(
+        (view) => viewNodes(model, { ...layout }, { ...view, short: '', isFlawed: false }, livePalette)[0],
+      ),
     ),
   );
 }
 
 /** The nearest view in a direction: little sideways, then near. */
 function neighbour(views, from, right, up) {
-  let best = null, least = Infinity;
+  let best = null,
+    least = Infinity;
   for (const view of views) {
     const along = right * (view.azimuth - from.azimuth) + up * (view.elevation - from.elevation);
     if (along <= 1e-6) continue;
@@ -141,8 +179,8 @@ export function fieldMap(root, { height, label, onCursor }) {
   const barId = `field-bar-${++fieldCount}`;
   /** @type {?FieldModel} */
   let model = null;
-  let selected = null;  // id of the view that is open
-  let stop = null;      // id of the view that is the tab stop
+  let selected = null; // id of the view that is open
+  let stop = null; // id of the view that is the tab stop
   let links = new Map();
   let placedWidth = 0;
 
@@ -152,7 +190,11 @@ export function fieldMap(root, { height, label, onCursor }) {
     const link = svg(
       'a',
       {
-        href: view.href, class: 'view-link', tabindex: view.id === stop ? 0 : -1, 'aria-label': view.text, 'data-view': view.id,
+        href: view.href,
+        class: 'view-link',
+        tabindex: view.id === stop ? 0 : -1,
+        'aria-label': view.text,
+        'data-view': view.id,
         'aria-current': view.id === selected ? 'true' : null,
         on: {
           focus: () => focused(view),
@@ -172,11 +214,19 @@ export function fieldMap(root, { height, label, onCursor }) {
       return;
     }
     const hadFocus = host.contains(document.activeElement);
-    const width = widthNow(), tall = height(width);
+    const width = widthNow(),
+      tall = height(width);
     placedWidth = width;
-    if (!model.views.some(({ id }) => id === stop)) stop = model.views.some(({ id }) => id === selected) ? selected : model.views[0].id;
+    if (!model.views.some(({ id }) => id === stop))
+      stop = model.views.some(({ id }) => id === selected) ? selected : model.views[0].id;
     const layout = layoutOf(model, width, tall);
-    const picture = toElement(svg('svg', { width, height: tall, viewBox: `0 0 ${width} ${tall}` }, surroundings(model, layout, livePalette, barId)));
+    const picture = toElement(
+      svg(
+        'svg',
+        { width, height: tall, viewBox: `0 0 ${width} ${tall}` },
+        surroundings(model, layout, livePalette, barId),
+      ),
+    );
     links = new Map(model.views.map((view) => [view.id, linkOf(layout, view)]));
     // In reading order for a screen reader: highest elevation first; the open one last, so that its ring is on top.
     const order = [...model.views].sort((a, b) => b.elevation - a.elevation || a.azimuth - b.azimuth);
@@ -196,10 +246,13 @@ export function fieldMap(root, { height, label, onCursor }) {
     const moves = { ArrowLeft: [-1, 0], ArrowRight: [1, 0], ArrowUp: [0, 1], ArrowDown: [0, -1] };
     const order = [...model.views].sort((a, b) => b.elevation - a.elevation || a.azimuth - b.azimuth);
     const next =
-      event.key in moves ? neighbour(model.views, view, ...moves[event.key])
-      : event.key === 'Home' ? order[0]
-      : event.key === 'End' ? order.at(-1)
-      : undefined;
+      event.key in moves
+        ? neighbour(model.views, view, ...moves[event.key])
+        : event.key === 'Home'
+          ? order[0]
+          : event.key === 'End'
+            ? order.at(-1)
+            : undefined;
     if (next === undefined || event.ctrlKey || event.metaKey || event.altKey) return;
     event.preventDefault();
     if (next) links.get(next.id).focus();

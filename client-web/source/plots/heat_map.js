@@ -48,7 +48,8 @@ export function paint(canvas, model) {
 
 /** Which ends of the colour bar hide numbers. @param {MapModel} model */
 export function cutEnds({ values, low, high }) {
-  let isCutLow = false, isCutHigh = false;
+  let isCutLow = false,
+    isCutHigh = false;
   // A step of the table is 1/255 of the span; half of one beyond the end nobody can see.
   const slack = (high - low) / 510;
   for (const value of values) {
@@ -68,11 +69,20 @@ function edges(coordinates) {
 
 /** Where everything goes in a picture of `width` pixels; the aperture keeps its aspect ratio. @param {MapModel} model */
 function layoutOf(model, width, greatestHeight = Infinity) {
-  const [left, right] = edges(model.x), [bottom, top] = edges(model.y);
+  const [left, right] = edges(model.x),
+    [bottom, top] = edges(model.y);
   const margins = { left: 48, right: 74, top: 26, bottom: 42 };
   const aspect = (top - bottom) / (right - left) || 1;
-  const across = Math.max(60, Math.min(width - margins.left - margins.right, (greatestHeight - margins.top - margins.bottom) / aspect));
-  const box = { left: margins.left, top: margins.top, right: margins.left + across, bottom: margins.top + across * aspect };
+  const across = Math.max(
+    60,
+    Math.min(width - margins.left - margins.right, (greatestHeight - margins.top - margins.bottom) / aspect),
+  );
+  const box = {
+    left: margins.left,
+    top: margins.top,
+    right: margins.left + across,
+    bottom: margins.top + across * aspect,
+  };
   return {
     box,
     height: box.bottom + margins.bottom,
@@ -88,7 +98,9 @@ function surroundings(model, layout, palette, id) {
     bottomAxis(box, xs, ticksFor(xs.domain, box.right - box.left, 54), `x (${model.axisUnit})`, palette),
     colourBar(
       { x: box.right + 14, top: box.top, bottom: box.bottom },
-      { map: model.map, low: model.low, high: model.high, title: model.barTitle, ...cutEnds(model) }, palette, id,
+      { map: model.map, low: model.low, high: model.high, title: model.barTitle, ...cutEnds(model) },
+      palette,
+      id,
     ),
   ];
 }
@@ -101,8 +113,13 @@ export function mapNodes(model, { width, palette }) {
   const { box } = layout;
   const nodes = [
     svg('image', {
-      x: box.left, y: box.top, width: box.right - box.left, height: box.bottom - box.top, preserveAspectRatio: 'none',
-      'image-rendering': 'pixelated', href: canvas.toDataURL('image/png'),
+      x: box.left,
+      y: box.top,
+      width: box.right - box.left,
+      height: box.bottom - box.top,
+      preserveAspectRatio: 'none',
+      'image-rendering': 'pixelated',
+      href: canvas.toDataURL('image/png'),
     }),
     surroundings(model, layout, palette, 'bar'),
   ];
@@ -154,7 +171,13 @@ export function heatMap(root, { label, onCursor, keys: moreKeys = {} }) {
     canvas.style.height = `${box.bottom - box.top}px`;
     overlay?.remove();
     cross = toElement(svg('path', { class: 'cross', fill: 'none' }));
-    overlay = toElement(svg('svg', { width, height, viewBox: `0 0 ${width} ${height}`, 'aria-hidden': 'true' }, surroundings(model, layout, livePalette, barId)));
+    overlay = toElement(
+      svg(
+        'svg',
+        { width, height, viewBox: `0 0 ${width} ${height}`, 'aria-hidden': 'true' },
+        surroundings(model, layout, livePalette, barId),
+      ),
+    );
     overlay.append(cross);
     host.append(overlay);
     drawCross();
@@ -163,7 +186,8 @@ export function heatMap(root, { label, onCursor, keys: moreKeys = {} }) {
   function drawCross() {
     if (!point || !cross) return cross?.setAttribute('d', '');
     const { box, xs, ys } = layout;
-    const x = xs.at(model.x[point.column]).toFixed(1), y = ys.at(model.y[point.row]).toFixed(1);
+    const x = xs.at(model.x[point.column]).toFixed(1),
+      y = ys.at(model.y[point.row]).toFixed(1);
     cross.setAttribute('d', `M${box.left} ${y}H${box.right}M${x} ${box.top}V${box.bottom}`);
   }
 

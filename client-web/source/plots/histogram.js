@@ -12,7 +12,7 @@ import { linePath, svg, toElement } from './svg_tree.js';
 
 function layoutOf(model, width, height) {
   const box = { left: 62, top: 30, right: width - 16, bottom: height - 44 };
-  const most = Math.max(extent(model.count)?.[1] ?? 1, model.fit ? extent(model.fit)?.[1] ?? 0 : 0);
+  const most = Math.max(extent(model.count)?.[1] ?? 1, model.fit ? (extent(model.fit)?.[1] ?? 0) : 0);
   return {
     box,
     xs: linearScale([model.low[0], model.high[model.high.length - 1]], [box.left, box.right]),
@@ -25,21 +25,49 @@ export function histogramNodes(model, { width, height, palette }) {
   const { box, xs, ys } = layoutOf(model, width, height);
   const centres = Array.from(model.low, (low, i) => (low + model.high[i]) / 2);
   const bars = Array.from(model.count, (count, i) => {
-    const left = xs.at(model.low[i]), right = xs.at(model.high[i]);
+    const left = xs.at(model.low[i]),
+      right = xs.at(model.high[i]);
     return svg('rect', {
-      class: 'bar', 'data-bin': i, x: (left + 0.5).toFixed(1), y: ys.at(count ?? 0).toFixed(1),
-      width: Math.max(0.5, right - left - 1).toFixed(1), height: (box.bottom - ys.at(count ?? 0)).toFixed(1), fill: palette.fill,
+      class: 'bar',
+      'data-bin': i,
+      x: (left + 0.5).toFixed(1),
+      y: ys.at(count ?? 0).toFixed(1),
+      width: Math.max(0.5, right - left - 1).toFixed(1),
+      height: (box.bottom - ys.at(count ?? 0)).toFixed(1),
+      fill: palette.fill,
     });
   });
   return [
     leftAxis(box, ys, ticksFor(ys.domain, box.bottom - box.top, 44), model.yTitle, palette, { grid: true }),
     bars,
-    model.fit && svg('path', { d: linePath(centres, model.fit, xs, ys), fill: 'none', stroke: palette.warm, 'stroke-width': 1.75, 'stroke-dasharray': '7 3' }),
+    model.fit &&
+      svg('path', {
+        d: linePath(centres, model.fit, xs, ys),
+        fill: 'none',
+        stroke: palette.warm,
+        'stroke-width': 1.75,
+        'stroke-dasharray': '7 3',
+      }),
     model.marks.map(({ x, name }) => {
-      const at = xs.at(x), isLate = at > (box.left + box.right) / 2;
+      const at = xs.at(x),
+        isLate = at > (box.left + box.right) / 2;
       return [
-        svg('path', { d: `M${at.toFixed(1)} ${box.top - 4}V${box.bottom}`, stroke: palette.ink, 'stroke-width': 1, 'stroke-dasharray': '1 3' }),
-        svg('text', { x: (at + (isLate ? -5 : 5)).toFixed(1), y: box.top + 6, fill: palette.ink, 'text-anchor': isLate ? 'end' : 'start' }, name),
+        svg('path', {
+          d: `M${at.toFixed(1)} ${box.top - 4}V${box.bottom}`,
+          stroke: palette.ink,
+          'stroke-width': 1,
+          'stroke-dasharray': '1 3',
+        }),
+        svg(
+          'text',
+          {
+            x: (at + (isLate ? -5 : 5)).toFixed(1),
+            y: box.top + 6,
+            fill: palette.ink,
+            'text-anchor': isLate ? 'end' : 'start',
+          },
+          name,
+        ),
       ];
     }),
     bottomAxis(box, xs, ticksFor(xs.domain, box.right - box.left, 76), model.xTitle, palette),
@@ -66,7 +94,15 @@ export function histogram(root, { height, label, onCursor }) {
     if (!model) return;
     placedWidth = widthNow();
     const nodes = histogramNodes(model, { width: placedWidth, height, palette: livePalette });
-    host.replaceChildren(toElement(svg('svg', { width: placedWidth, height, viewBox: `0 0 ${placedWidth} ${height}`, 'aria-hidden': 'true' }, nodes)));
+    host.replaceChildren(
+      toElement(
+        svg(
+          'svg',
+          { width: placedWidth, height, viewBox: `0 0 ${placedWidth} ${height}`, 'aria-hidden': 'true' },
+          nodes,
+        ),
+      ),
+    );
     for (const bar of host.querySelectorAll('.bar')) {
       bar.addEventListener('pointerenter', () => moveTo(Number(bar.dataset.bin)));
     }

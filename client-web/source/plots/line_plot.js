@@ -6,7 +6,7 @@ import { canvasPalette } from './palette.js';
 import { zoomedRange } from './scales.js';
 import { decadeLabel, tickLabels } from './ticks.js';
 
-const clickSlack = 4;  // pixels that a hand may move between press and release of a click
+const clickSlack = 4; // pixels that a hand may move between press and release of a click
 
 function axisOf({ title, isLog }, palette, size, isTitled) {
   return {
@@ -18,7 +18,10 @@ function axisOf({ title, isLog }, palette, size, isTitled) {
     grid: { stroke: palette.grid, width: 1 },
     ticks: { stroke: palette.rule, width: 1, size: 4 },
     values: isLog
-      ? (_, splits) => splits.map((value) => (value > 0 && Number.isInteger(Number(Math.log10(value).toFixed(6))) ? decadeLabel(value) : ''))
+      ? (_, splits) =>
+          splits.map((value) =>
+            value > 0 && Number.isInteger(Number(Math.log10(value).toFixed(6))) ? decadeLabel(value) : '',
+          )
       : (_, splits) => tickLabels(splits),
     ...(isLog ? { filter: (_, splits) => splits } : {}),
   };
@@ -28,15 +31,25 @@ const fontOfPage = () => getComputedStyle(document.body).fontFamily;
 
 /** Curves and band edges in the library's order, and which pairs of them bound a band. */
 function seriesOf(model, palette) {
-  const series = [{}], data = [model.x.values], bands = [];
+  const series = [{}],
+    data = [model.x.values],
+    bands = [];
   for (const { low, high } of model.bands) {
     data.push(high, low);
-    series.push({ stroke: palette.band, width: 1, points: { show: false } }, { stroke: palette.band, width: 1, points: { show: false } });
-    bands.push({ series: [series.length - 2, series.length - 1], fill: palette.band });  // upper first, or nothing is drawn
+    series.push(
+      { stroke: palette.band, width: 1, points: { show: false } },
+      { stroke: palette.band, width: 1, points: { show: false } },
+    );
+    bands.push({ series: [series.length - 2, series.length - 1], fill: palette.band }); // upper first, or nothing is drawn
   }
   for (const { values, dash, isWarm, isThin } of model.curves) {
     data.push(values);
-    series.push({ stroke: isWarm ? palette.warm : palette.line, width: isThin ? 0.75 : 1.5, dash, points: { show: false } });
+    series.push({
+      stroke: isWarm ? palette.warm : palette.line,
+      width: isThin ? 0.75 : 1.5,
+      dash,
+      points: { show: false },
+    });
   }
   return { series, data, bands };
 }
@@ -51,7 +64,10 @@ function seriesOf(model, palette) {
  *          zoomRange?: () => [number, number]}} options
  *        onZoom gets null for "all of it"; zoomRange tells what is asked for by now, which may not be drawn yet
  */
-export function linePlot(root, { height, label, onCursor, onPick = null, onZoom = null, zoomRange = () => xRange(model) }) {
+export function linePlot(
+  root,
+  { height, label, onCursor, onPick = null, onZoom = null, zoomRange = () => xRange(model) },
+) {
   const host = document.createElement('div');
   host.className = 'line-plot';
   // The name of y stands above the plot, where it is read without turning one's head.
@@ -71,7 +87,9 @@ export function linePlot(root, { height, label, onCursor, onPick = null, onZoom 
     if (!model.mark) return;
     const [low, high] = xRange(model);
     if (model.mark.x < low || model.mark.x > high) return;
-    const x = chart.valToPos(model.mark.x, 'x', true), { top, height: tall } = chart.bbox, context = chart.ctx;
+    const x = chart.valToPos(model.mark.x, 'x', true),
+      { top, height: tall } = chart.bbox,
+      context = chart.ctx;
     context.save();
     context.strokeStyle = palette.warm;
     context.lineWidth = 2 * devicePixelRatio;
@@ -99,7 +117,10 @@ export function linePlot(root, { height, label, onCursor, onPick = null, onZoom 
     const [yLow, yHigh] = yRange(model);
     plot = new uPlot(
       {
-        width: width(), height, series, bands,
+        width: width(),
+        height,
+        series,
+        bands,
         padding: [8, 22, 0, 0],
         legend: { show: false },
         scales: {
@@ -107,7 +128,12 @@ export function linePlot(root, { height, label, onCursor, onPick = null, onZoom 
           y: { distr: model.y.isLog ? 3 : 1, range: () => [yLow, yHigh] },
         },
         axes: [axisOf(model.x, palette, 34, true), axisOf(model.y, palette, 54, false)],
-        cursor: { y: false, drag: { x: Boolean(onZoom), y: false, setScale: false, dist: clickSlack }, points: { size: 6 }, bind: { dblclick: () => null } },
+        cursor: {
+          y: false,
+          drag: { x: Boolean(onZoom), y: false, setScale: false, dist: clickSlack },
+          points: { size: 6 },
+          bind: { dblclick: () => null },
+        },
         hooks: {
           draw: [(chart) => drawMark(chart, palette)],
           setCursor: [(chart) => moved(chart.cursor.idx, false)],

@@ -21,7 +21,9 @@ import { bandPath, linePath, svg } from './svg_tree.js';
 export function yRange(model) {
   if (model.y.range) return model.y.range;
   const all = [...model.curves.map(({ values }) => values), ...model.bands.flatMap(({ low, high }) => [low, high])];
-  const ranges = all.map((values) => extent(model.y.isLog ? Array.from(values).filter((value) => value > 0) : values)).filter(Boolean);
+  const ranges = all
+    .map((values) => extent(model.y.isLog ? Array.from(values).filter((value) => value > 0) : values))
+    .filter(Boolean);
   const range = extent(ranges.flat()) ?? [0, 1];
   return model.y.isLog ? [range[0] / 1.3, range[1] * 1.3] : paddedRange(range);
 }
@@ -42,19 +44,39 @@ export function lineNodes(model, { width, height, palette }) {
   const ys = (model.y.isLog ? logScale : linearScale)(yRange(model), [box.bottom, box.top]);
   const clip = 'area';
   return [
-    svg('defs', {}, svg('clipPath', { id: clip }, svg('rect', { x: box.left, y: box.top, width: box.right - box.left, height: box.bottom - box.top }))),
-    leftAxis(box, ys, axisTicks(ys.domain, model.y.isLog, box.bottom - box.top, 44), model.y.title, palette, { grid: true }),
+    svg(
+      'defs',
+      {},
+      svg(
+        'clipPath',
+        { id: clip },
+        svg('rect', { x: box.left, y: box.top, width: box.right - box.left, height: box.bottom - box.top }),
+      ),
+    ),
+    leftAxis(box, ys, axisTicks(ys.domain, model.y.isLog, box.bottom - box.top, 44), model.y.title, palette, {
+      grid: true,
+    }),
     bottomAxis(box, xs, axisTicks(xs.domain, model.x.isLog, box.right - box.left, 90), model.x.title, palette),
     svg(
-      'g', { 'clip-path': `url(#${clip})`, fill: 'none', 'stroke-linejoin': 'round' },
-      model.bands.map(({ low, high }) => svg('path', { d: bandPath(model.x.values, low, high, xs, ys), fill: palette.band })),
+      'g',
+      { 'clip-path': `url(#${clip})`, fill: 'none', 'stroke-linejoin': 'round' },
+      model.bands.map(({ low, high }) =>
+        svg('path', { d: bandPath(model.x.values, low, high, xs, ys), fill: palette.band }),
+      ),
       model.curves.map(({ values, dash, isWarm, isThin }) =>
         svg('path', {
-          d: linePath(model.x.values, values, xs, ys), stroke: isWarm ? palette.warm : palette.line,
-          'stroke-width': isThin ? 0.75 : 1.5, 'stroke-dasharray': dash ? dash.join(' ') : null,
+          d: linePath(model.x.values, values, xs, ys),
+          stroke: isWarm ? palette.warm : palette.line,
+          'stroke-width': isThin ? 0.75 : 1.5,
+          'stroke-dasharray': dash ? dash.join(' ') : null,
         }),
       ),
-      model.mark && svg('path', { d: `M${xs.at(model.mark.x).toFixed(1)} ${box.top}V${box.bottom}`, stroke: palette.warm, 'stroke-dasharray': '2 3' }),
+      model.mark &&
+        svg('path', {
+          d: `M${xs.at(model.mark.x).toFixed(1)} ${box.top}V${box.bottom}`,
+          stroke: palette.warm,
+          'stroke-dasharray': '2 3',
+        }),
     ),
     legendNodes(model, box, palette),
   ];
@@ -62,7 +84,11 @@ export function lineNodes(model, { width, height, palette }) {
 
 function legendNodes(model, box, palette) {
   const entries = [
-    ...model.curves.map((curve) => ({ name: curve.name, dash: curve.dash, colour: curve.isWarm ? palette.warm : palette.line })),
+    ...model.curves.map((curve) => ({
+      name: curve.name,
+      dash: curve.dash,
+      colour: curve.isWarm ? palette.warm : palette.line,
+    })),
     ...model.bands.map((band) => ({ name: band.name, colour: palette.band, isBand: true })),
   ];
   let x = box.right;
@@ -70,10 +96,17 @@ function legendNodes(model, box, palette) {
   return entries.reverse().map(({ name, dash, colour, isBand }) => {
     x -= name.length * 6.6 + 46;
     return svg(
-      'g', { transform: `translate(${x.toFixed(0)} 14)`, fill: palette.soft },
+      'g',
+      { transform: `translate(${x.toFixed(0)} 14)`, fill: palette.soft },
       isBand
         ? svg('rect', { x: 0, y: -8, width: 20, height: 9, fill: colour })
-        : svg('path', { d: 'M0 -4h20', stroke: colour, 'stroke-width': 1.5, 'stroke-dasharray': dash ? dash.join(' ') : null, fill: 'none' }),
+        : svg('path', {
+            d: 'M0 -4h20',
+            stroke: colour,
+            'stroke-width': 1.5,
+            'stroke-dasharray': dash ? dash.join(' ') : null,
+            fill: 'none',
+          }),
       svg('text', { x: 25, y: 0 }, name),
     );
   });

@@ -7,8 +7,15 @@
 
 /** For files: dark on white, whatever the page looks like. @type {Palette} */
 export const paperPalette = Object.freeze({
-  ink: '#18202c', soft: '#4f5967', rule: '#8a929e', grid: '#e3e5e8', sheet: '#ffffff',
-  line: '#1b5aa4', band: '#b9cfec', warm: '#b84e10', fill: '#9dbbe2',
+  ink: '#18202c',
+  soft: '#4f5967',
+  rule: '#8a929e',
+  grid: '#e3e5e8',
+  sheet: '#ffffff',
+  line: '#1b5aa4',
+  band: '#b9cfec',
+  warm: '#b84e10',
+  fill: '#9dbbe2',
 });
 
 /** For living SVG: custom properties, so that a change of theme needs no drawing. @type {Palette} */
@@ -20,6 +27,9 @@ export const livePalette = Object.freeze(
 export function canvasPalette(element) {
   const style = getComputedStyle(element);
   return Object.fromEntries(
-    Object.keys(paperPalette).map((name) => [name, style.getPropertyValue(`--plot-${name}`).trim() || paperPalette[name]]),
+    Object.keys(paperPalette).map((name) => [
+      name,
+      style.getPropertyValue(`--plot-${name}`).trim() || paperPalette[name],
+    ]),
   );
 }

@@ -15,12 +15,17 @@ export function linearScale([low, high], [start, end]) {
 /** Decades of equal length; numbers must be positive. @returns {Scale} */
 export function logScale([low, high], [start, end]) {
   const inner = linearScale([Math.log10(low), Math.log10(high)], [start, end]);
-  return { domain: [low, high], at: (value) => inner.at(Math.log10(value)), invert: (pixel) => 10 ** inner.invert(pixel) };
+  return {
+    domain: [low, high],
+    at: (value) => inner.at(Math.log10(value)),
+    invert: (pixel) => 10 ** inner.invert(pixel),
+  };
 }
 
 /** Least and greatest of the finite numbers; null when there are none. */
 export function extent(values) {
-  let low = Infinity, high = -Infinity;
+  let low = Infinity,
+    high = -Infinity;
   for (const value of values) {
     if (value === null || !Number.isFinite(value)) continue;
     if (value < low) low = value;

@@ -16,13 +16,15 @@ export function linearTicks(low, high, wanted = 5) {
   const step = tickStep(high - low, wanted);
   const ticks = [];
   // Counted in steps, not added up, so that 0.3 does not become 0.30000000000000004.
-  for (let k = Math.ceil(low / step - 1e-9); k <= high / step + 1e-9; ++k) ticks.push(Number((k * step).toPrecision(12)));
+  for (let k = Math.ceil(low / step - 1e-9); k <= high / step + 1e-9; ++k)
+    ticks.push(Number((k * step).toPrecision(12)));
   return ticks;
 }
 
 /** Powers of ten from low to high, thinned to every second, third … when there are many. */
 export function decadeTicks(low, high, wanted = 6) {
-  const first = Math.ceil(Math.log10(low) - 1e-9), last = Math.floor(Math.log10(high) + 1e-9);
+  const first = Math.ceil(Math.log10(low) - 1e-9),
+    last = Math.floor(Math.log10(high) + 1e-9);
   const stride = Math.max(1, Math.ceil((last - first + 1) / wanted));
   const ticks = [];
   for (let power = first; power <= last; power += stride) ticks.push(10 ** power);

@@ -16,14 +16,23 @@ const startMilliseconds = 30000;
  *          stop() ends the program and keeps the folder
  */
 export async function serve({ views = 24, frames = 2000, grid = 48 } = {}) {
-  if (!existsSync(program)) throw new Error(`there is no program at ${program}: build it, or name its folder in BENTLIGHT_BUILD`);
+  if (!existsSync(program))
+    throw new Error(`there is no program at ${program}: build it, or name its folder in BENTLIGHT_BUILD`);
   const folder = mkdtempSync(path.join(tmpdir(), 'bentlight-page-'));
-  const archive = path.join(folder, 'archive'), state = path.join(folder, 'state');
-  execFileSync(program, ['demo', archive, '--views', String(views), '--frames', String(frames), '--grid', String(grid)], { stdio: 'ignore' });
+  const archive = path.join(folder, 'archive'),
+    state = path.join(folder, 'state');
+  execFileSync(
+    program,
+    ['demo', archive, '--views', String(views), '--frames', String(frames), '--grid', String(grid)],
+    { stdio: 'ignore' },
+  );
   mkdirSync(archive, { recursive: true });
   writeFileSync(path.join(archive, 'not_a_wavefront.h5'), 'This file says it is HDF5, and is not.');
   execFileSync(program, ['index', '--archive', archive, '--state', state], { stdio: 'ignore' });
-  const child = spawn(program, ['serve', '--archive', archive, '--state', state, '--listen', '127.0.0.1:0'], { stdio: ['ignore', 'pipe', 'pipe'], cwd: path.dirname(pageFolder) });
+  const child = spawn(program, ['serve', '--archive', archive, '--state', state, '--listen', '127.0.0.1:0'], {
+    stdio: ['ignore', 'pipe', 'pipe'],
+    cwd: path.dirname(pageFolder),
+  });
   const ended = new Promise((resolve) => child.on('exit', resolve));
   const url = await addressOf(child, ended);
   const stop = async () => {
@@ -31,7 +40,9 @@ export async function serve({ views = 24, frames = 2000, grid = 48 } = {}) {
     await ended;
   };
   return {
-    url, folder, stop,
+    url,
+    folder,
+    stop,
     close: async () => {
       await stop();
       rmSync(folder, { recursive: true, force: true });

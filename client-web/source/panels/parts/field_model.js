@@ -24,22 +24,27 @@ export function fieldModel(result, { state, checks }) {
   const { azimuth, elevation, value, low, high } = result.arrays;
   const ids = result.provenance.views.map((view) => view.id ?? view);
   const unit = value.unit;
-  const views = ids.map((id, i) => {
-    const flaws = (checks.get(id) ?? []).filter(({ severity }) => severity !== 'info' && severity !== 'note');
-    const place = angleText({ azimuth_deg: azimuth.data[i], elevation_deg: elevation.data[i] });
-    const reading = readingText(value.data[i], low?.data[i] ?? null, high?.data[i] ?? null, unit);
-    return {
-      id,
-      azimuth: azimuth.data[i],
-      elevation: elevation.data[i],
-      value: value.data[i],
-      text: `${place}: ${reading}${flaws.length ? `; ${flaws.length === 1 ? 'a check' : `${flaws.length} checks`} to look at` : ''}`,
-      // The same digits as in the name, so that who says what they see is understood.
-      short: value.data[i] === null ? '–' : intervalText({ value: value.data[i], low: low?.data[i] ?? null, high: high?.data[i] ?? null }).value,
-      href: `?${formatState(withView(state, id))}`,
-      isFlawed: flaws.length > 0,
-    };
-  }).filter((view) => view.azimuth !== null && view.elevation !== null);
+  const views = ids
+    .map((id, i) => {
+      const flaws = (checks.get(id) ?? []).filter(({ severity }) => severity !== 'info' && severity !== 'note');
+      const place = angleText({ azimuth_deg: azimuth.data[i], elevation_deg: elevation.data[i] });
+      const reading = readingText(value.data[i], low?.data[i] ?? null, high?.data[i] ?? null, unit);
+      return {
+        id,
+        azimuth: azimuth.data[i],
+        elevation: elevation.data[i],
+        value: value.data[i],
+        text: `${place}: ${reading}${flaws.length ? `; ${flaws.length === 1 ? 'a check' : `${flaws.length} checks`} to look at` : ''}`,
+        // The same digits as in the name, so that who says what they see is understood.
+        short:
+          value.data[i] === null
+            ? '–'
+            : intervalText({ value: value.data[i], low: low?.data[i] ?? null, high: high?.data[i] ?? null }).value,
+        href: `?${formatState(withView(state, id))}`,
+        isFlawed: flaws.length > 0,
+      };
+    })
+    .filter((view) => view.azimuth !== null && view.elevation !== null);
   const [least, greatest] = state.field_limits ?? tightLimits(value.data);
   return { views, map: sequential, low: least, high: greatest, barTitle: unitText(unit) || labelOf(state.field), unit };
 }

@@ -2,7 +2,9 @@
 
 import { svg, toElement } from '../../plots/svg_tree.js';
 
-const rays = 13, width = 560, height = 120;
+const rays = 13,
+  width = 560,
+  height = 120;
 
 /** A ray's height along its way: straight, then turned by what it meets. */
 function rayPath(k) {
@@ -28,9 +30,14 @@ function frontPath(distance) {
 }
 
 export function raysPicture() {
-  return toElement(svg(
-    'svg', { class: 'rays', viewBox: `0 0 ${width} ${height}`, 'aria-hidden': 'true', fill: 'none' },
-    Array.from({ length: rays }, (_, k) => svg('path', { class: 'ray', d: rayPath(k) })),
-    [0.12, 0.25, 0.38, 0.52, 0.66, 0.8].map((share, i) => svg('path', { class: `front front-${i}`, d: frontPath(share * width) })),
-  ));
+  return toElement(
+    svg(
+      'svg',
+      { class: 'rays', viewBox: `0 0 ${width} ${height}`, 'aria-hidden': 'true', fill: 'none' },
+      Array.from({ length: rays }, (_, k) => svg('path', { class: 'ray', d: rayPath(k) })),
+      [0.12, 0.25, 0.38, 0.52, 0.66, 0.8].map((share, i) =>
+        svg('path', { class: `front front-${i}`, d: frontPath(share * width) }),
+      ),
+    ),
+  );
 }

@@ -356,7 +356,7 @@ int run_description() {
   const archive::ProbeClient probe("");
   const ingest::Indexer indexer({files, probe, **index, pool, log}, nowhere, nowhere);
   const auto routes = http::service_routes(
-      {answering.engine, answering.lists, answering.jobs, answering.cache, indexer, files, log});
+      {answering.engine, answering.lists, answering.jobs, answering.cache, indexer, files, log}, nullptr);
   fmt::print("{}", http::openapi_description(routes, answering.catalogue));
   fs::remove_all(nowhere);
   return 0;

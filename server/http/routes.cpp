@@ -4,6 +4,7 @@
 #include <fmt/format.h>
 #include <nlohmann/json.hpp>
 
+#include "base/digest.h"
 #include "base/text.h"
 #include "http/service.h"
 #include "query/encode/encoding.h"
@@ -355,20 +356,26 @@ void add_service_routes(std::vector<Route>& routes, const ServiceParts& parts) {
 
 }  // namespace
 
-std::vector<Route> service_routes(ServiceParts parts) {
+std::vector<Route> service_routes(ServiceParts parts, Handler metrics) {
   std::vector<Route> routes;
   add_list_routes(routes, parts);
   add_item_routes(routes, parts);
   add_result_routes(routes, parts);
   add_job_routes(routes, parts);
   add_service_routes(routes, parts);
-  const auto described = std::make_shared<const std::string>(openapi_description(routes, parts.engine.catalogue()));
+  routes.push_back({.path = "/metrics",
+                    .name = "getMetrics",
+                    .summary = "Counters for a dashboard, in the OpenMetrics text format.",
+                    .replies = {{.summary = "The counters.", .media_types = {"application/openmetrics-text"}}},
+                    .handler = std::move(metrics)});
   routes.push_back({.path = "/openapi.json",
                     .name = "getDescription",
                     .summary = "This description.",
-                    .handler = [described](const Request&) -> Expected<Reply> {
-                      return Reply{.body = described};
-                    }});
+                    .replies = {{.summary = "OpenAPI 3.1."}}});
+  const auto described = std::make_shared<const std::string>(openapi_description(routes, parts.engine.catalogue()));
+  routes.back().handler = [described](const Request&) -> Expected<Reply> {
+    return Reply{.body = described, .etag = sha256_hex(*described).substr(0, 32)};
+  };
   return routes;
 }
 

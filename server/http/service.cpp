@@ -147,10 +147,8 @@ class HttplibService final : public Service {
   }
 
   void add_routes() {
-    for (Route& route : service_routes(parts_)) add(std::make_shared<const Route>(std::move(route)));
-    add(std::make_shared<const Route>(Route{.path = "/metrics",
-                                            .name = "metrics",
-                                            .handler = [this](const Request&) { return metrics_reply(); }}));
+    const Handler metrics = [this](const Request&) { return metrics_reply(); };
+    for (Route& route : service_routes(parts_, metrics)) add(std::make_shared<const Route>(std::move(route)));
     server_.Get(R"(/(.*))", [this](const httplib::Request& request, httplib::Response& response) {
       const auto start = std::chrono::steady_clock::now();
       const std::string id = new_id();

@@ -50,8 +50,9 @@ class Service {
   virtual void stop() = 0;
 };
 
-/// The route table, for the server and for the printed description.
-std::vector<Route> service_routes(ServiceParts parts);
+/// The route table, for the server and for the printed description. `metrics` answers /metrics, whose counters are the
+/// server's own.
+std::vector<Route> service_routes(ServiceParts parts, Handler metrics);
 
 /// OpenAPI 3.1 of the routes and the analyses.
 std::string openapi_description(const std::vector<Route>& routes, const query::Catalogue& catalogue);

@@ -27,7 +27,7 @@ const std::vector<Parameter>& preparation_parameters() {
        .standard = "0", .low = 0, .high = 0.95, .example = "0.3"},
       {.name = "center", .kind = ParameterKind::text,
        .summary = "Center of the aperture as x,y in metres from the center of the view's own.", .standard = "0,0",
-       .pattern = R"([0-9.eE+-]{1,24},[0-9.eE+-]{1,24})", .example = "0.01,0"},
+       .pattern = R"([0-9.eE+-]{1,24},[0-9.eE+-]{1,24})"},
       {.name = "remove", .kind = ParameterKind::text,
        .summary = "What is taken out of each frame: any of piston, tilt (both axes), mean (the steady lensing), "
                   "focus, modes:N (the first N of the view's orthonormal modes), or none.",

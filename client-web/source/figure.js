@@ -9,7 +9,7 @@ import { warningItems } from './faces.js';
 import { numberText, plainNumber } from './numbers.js';
 import { withUnit } from './units.js';
 
-const mostCells = 4000; // of a table on the page; the files hold everything
+const mostCells = 1500; // of a table on the page; the files hold everything
 
 /**
  * @typedef {{
@@ -73,6 +73,7 @@ export function createFigure({ name, title }) {
       actions[button.dataset.save]();
     });
   }
+  part(save, '.links', 'figure').addEventListener('click', () => (save.open = false));
   find('.call').addEventListener('click', () => openCall(offer, title));
   numbersButton.addEventListener('click', () => {
     numbers.hidden = !numbers.hidden;

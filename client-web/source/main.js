@@ -1,6 +1,7 @@
 // Reads the address, mounts the panels of the stage it names, and tells them of every change.
 
 import { ApiError, createApi } from './api.js';
+import { begin } from './busy.js';
 import { debounced, element, part } from './dom.js';
 import { lostFace, refusalFace } from './faces.js';
 import { watchIndex } from './index_watch.js';
@@ -164,16 +165,23 @@ async function loadSubject() {
 
 let showing = 0;
 
-async function show({ isNewSubject = false } = {}) {
-  const mine = ++showing;
+async function show(change = {}) {
+  const end = begin();
+  try {
+    await showNow(++showing, change);
+  } finally {
+    end();
+  }
+}
+
+async function showNow(mine, { isNewSubject = false }) {
   const stage = stageOf(state);
   try {
     const next = await loadSubject();
     if (mine !== showing) return;
     subject = next;
   } catch (error) {
-    if (error.name === 'AbortError' || mine !== showing) return;
-    showFailure(error);
+    if (error.name !== 'AbortError' && mine === showing) showFailure(error);
     return;
   }
   part(document, '#failure', 'main').replaceChildren();
@@ -181,12 +189,14 @@ async function show({ isNewSubject = false } = {}) {
   if (!(await arrange(stage)) || mine !== showing) return;
   nameThePlace(stage);
   for (const { panel } of mounted.values()) panel.update(state, subject);
-  if (isNewSubject) {
-    const heading = shell.main.querySelector('h1');
-    // A cell of the map that was just followed keeps the focus: people walk from angle to angle.
-    if (!shell.rail.contains(document.activeElement)) heading?.focus({ preventScroll: true });
-    if (stage !== 'view' || !shell.rail.contains(document.activeElement)) scrollTo({ top: 0 });
-  }
+  if (isNewSubject) lookAtIt();
+}
+
+/** The focus and the eye go to the new subject; but who walks from angle to angle in the rail stays there. */
+function lookAtIt() {
+  if (shell.rail.contains(document.activeElement)) return;
+  shell.main.querySelector('h1')?.focus({ preventScroll: true });
+  scrollTo({ top: 0 });
 }
 
 /** The subject itself is not there, or cannot be asked for. */

@@ -64,13 +64,15 @@ export function decimalsFor(uncertainty) {
 }
 
 /**
- * A value with its interval, all with as many decimals as the interval's half width calls for.
+ * A value with its interval, all with as many decimals as the interval's half width calls for, but never fewer than
+ * three figures of the value: a wide interval is no reason to hide what was found.
  *
  * @param {{value: number, low?: number, high?: number}} value
  * @returns {{value: string, low: ?string, high: ?string}}
  */
 export function intervalText({ value, low = null, high = null }) {
-  const decimals = low === null || high === null ? null : decimalsFor((high - low) / 2);
+  const needed = low === null || high === null ? null : decimalsFor((high - low) / 2);
+  const decimals = needed === null || value === 0 ? needed : Math.max(needed, 2 - Math.floor(Math.log10(Math.abs(value))));
   const largest = Math.max(Math.abs(value), Math.abs(low ?? 0), Math.abs(high ?? 0));
   // Beyond the range of plain decimals powers of ten read better, and nothing lines up anyway.
   if (decimals === null || decimals > 6 || largest >= 1e6) {

@@ -2,6 +2,7 @@
 // was lost. Every panel that shows an answer goes through here, so that all of them behave alike.
 
 import { ApiError, ConnectionError } from './api.js';
+import { begin } from './busy.js';
 import { jobFace, lostFace, refusalFace, workingFace } from './faces.js';
 
 const patienceMilliseconds = 300; // work shorter than that needs no announcement
@@ -56,6 +57,7 @@ export function createQuestion(api, host) {
       stop();
       current = key;
       const mine = (controller = new AbortController());
+      const end = begin();
       const again = () => {
         current = null;
         this.put(key, ask, draw);
@@ -85,6 +87,8 @@ export function createQuestion(api, host) {
       } catch (error) {
         clearTimeout(late);
         if (!mine.signal.aborted) failed(error, again);
+      } finally {
+        end();
       }
     },
     /** Forgets what is shown, so that the next put asks again. */

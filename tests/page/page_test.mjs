@@ -2,6 +2,7 @@
 
 import { test, before, after, beforeEach, afterEach } from 'node:test';
 import assert from 'node:assert/strict';
+import { unitText } from '../../client-web/source/units.js';
 import { launch, openPage, settled } from './support/browser.mjs';
 import { parsed, read, tunnelRun } from './support/reading.mjs';
 import { serve } from './support/serve.mjs';
@@ -473,7 +474,7 @@ test('companion signals can be drawn, in their own unit', async () => {
 
   assert.match(
     await page.locator('[data-name=series] .axis-title').innerText(),
-    new RegExp(`\\(${signals[0].unit.replace(/[/^]/g, '.')}`),
+    new RegExp(`\\(${unitText(signals[0].unit)}\\)`),
   );
 });
 

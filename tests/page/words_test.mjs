@@ -51,6 +51,10 @@ test('a value has the decimals of its uncertainty', () => {
   assert.equal(intervalText({ value: 0.5 }).low, null);
 });
 
+test('a wide interval leaves three figures of the value', () => {
+  assert.deepEqual(intervalText({ value: 0.21437, low: 0.0831, high: 0.3456 }), { value: '0.214', low: '0.083', high: '0.346' });
+});
+
 test('what was stated is shown as it was stated', () => {
   assert.deepEqual(
     [0.45, 100, 5.32e-7, 1.5].map((value) => statedText(value)),

@@ -57,7 +57,7 @@ export function mount(root, { api }) {
         ({ result }) => {
           const known = shownValues.filter(({ name }) => Number.isFinite(result.values[name]?.value));
           list.replaceChildren(...known.map((entry, i) => valueItem(entry, result.values[entry.name], i === 0)));
-          const frames = result.values.frames?.value ?? result.provenance.frames;
+          const frames = result.provenance.frames?.count;
           const meaning = unitMeaning(state.length_unit, view.conditions);
           note.textContent = [
             removalText(state.remove).replace(/^./, (letter) => letter.toUpperCase()),

@@ -126,7 +126,8 @@ export function mount(root, { api, go }) {
       position = 0;
     }
     drawWhole();
-    figure.setWarnings(answer.result.warnings);
+    // The window only picks the frame here, so that the steady lensing is not its own goes without saying.
+    figure.setWarnings(answer.result.warnings.filter(({ code }) => code !== 'mean-over-record'));
     figure.setOffer({
       answer,
       what: `frame-${frame.data[0]}`,

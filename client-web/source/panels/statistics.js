@@ -12,7 +12,7 @@ import { histogram, histogramNodes } from '../plots/histogram.js';
 import { linePlot } from '../plots/line_plot.js';
 import { lineNodes } from '../plots/line_svg.js';
 import { paperPalette } from '../plots/palette.js';
-import { extent, symmetricLimits, tightLimits } from '../plots/scales.js';
+import { extent, paddedRange, symmetricLimits, tightLimits } from '../plots/scales.js';
 import { labelOf } from '../quantities.js';
 import { createQuestion } from '../question.js';
 import { quantityText, unitText, withUnit } from '../units.js';
@@ -188,6 +188,12 @@ function distribution() {
   };
 }
 
+/** Range of the mean and of its interval once a quarter of the record is in: the first few frames would dwarf the rest. */
+function settledRange(mean, low, high) {
+  const later = (values) => (values ?? []).slice(Math.floor(mean.length / 4));
+  return paddedRange(extent([...mean, ...later(low), ...later(high)]) ?? [0, 1]);
+}
+
 function convergence() {
   const figure = createFigure({ name: 'convergence', title: 'Has the mean settled?' });
   let latest = null;
@@ -223,7 +229,7 @@ function convergence() {
       const level = answer.result.values.opd_rms_mean?.level;
       const model = {
         x: { values: Float64Array.from(frames.data), title: 'Frames so far' },
-        y: { title: withUnit('OPD_rms, mean', mean.unit) },
+        y: { title: withUnit('OPD_rms, mean', mean.unit), range: settledRange(mean.data, low?.data, high?.data) },
         curves: [{ name: 'mean', values: mean.data }],
         bands:
           low && high

@@ -70,7 +70,7 @@ function viewHeading(view) {
     view.path && element('p', { class: 'note path' }, element('code', {}, view.path)),
   );
   return [
-    element('p', { class: 'kicker' }, [view.source, view.run].filter(Boolean).join(' · ')),
+    element('p', { class: 'kicker' }, [view.source, view.run_name ?? view.run].filter(Boolean).join(' · ')),
     element('h1', { tabindex: -1 }, angleText(view).replace(/^a/, 'A')),
     element(
       'p',

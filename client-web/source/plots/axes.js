@@ -15,6 +15,9 @@ export function ticksFor([low, high], length, perTick = 70) {
   return { ticks, labels: tickLabels(ticks) };
 }
 
+/** Pixels for each tick of an upright axis: a short one may be denser than a long one. */
+export const roomFor = (length) => (length < 220 ? 32 : 48);
+
 /** The axis below `box`. @param {Box} box */
 export function bottomAxis(box, scale, { ticks, labels }, title, palette) {
   return svg(
@@ -61,7 +64,7 @@ export function leftAxis(box, scale, { ticks, labels }, title, palette, { grid =
 export function colourBar(place, bar, palette, id) {
   const width = 12;
   const scale = linearScale([bar.low, bar.high], [place.bottom, place.top]);
-  const { ticks, labels } = ticksFor([bar.low, bar.high], place.bottom - place.top, 32);
+  const { ticks, labels } = ticksFor([bar.low, bar.high], place.bottom - place.top, roomFor(place.bottom - place.top));
   const steps = 32;
   const stops = Array.from({ length: steps + 1 }, (_, i) =>
     svg('stop', {

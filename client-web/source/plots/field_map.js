@@ -1,6 +1,6 @@
 // The field of regard as a map over azimuth and elevation: one link per view, one tab stop for all of them.
 
-import { bottomAxis, colourBar, leftAxis, ticksFor } from './axes.js';
+import { bottomAxis, colourBar, leftAxis, roomFor, ticksFor } from './axes.js';
 import { hexColour, isLight, tableIndex } from './colour_maps.js';
 import { livePalette } from './palette.js';
 import { extent, linearScale } from './scales.js';
@@ -101,8 +101,8 @@ function surroundings(model, layout, palette, id) {
   const { box, xs, ys } = layout;
   const outside = model.views.map(({ value }) => value).filter((value) => value !== null);
   return [
-    leftAxis(box, ys, ticksFor(ys.domain, box.bottom - box.top, 32), 'elevation (°)', palette),
-    bottomAxis(box, xs, ticksFor(xs.domain, box.right - box.left, 42), 'azimuth (°)', palette),
+    leftAxis(box, ys, ticksFor(ys.domain, box.bottom - box.top, roomFor(box.bottom - box.top)), 'elevation (°)', palette),
+    bottomAxis(box, xs, ticksFor(xs.domain, box.right - box.left, box.right - box.left < 300 ? 42 : 72), 'azimuth (°)', palette),
     colourBar(
       { x: box.right + 14, top: box.top, bottom: box.bottom },
       {

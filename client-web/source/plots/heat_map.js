@@ -71,7 +71,7 @@ function edges(coordinates) {
 function layoutOf(model, width, greatestHeight = Infinity) {
   const [left, right] = edges(model.x),
     [bottom, top] = edges(model.y);
-  const margins = { left: 48, right: 74, top: 26, bottom: 42 };
+  const margins = { left: 44, right: 62, top: 26, bottom: 42 };
   const aspect = (top - bottom) / (right - left) || 1;
   const across = Math.max(
     60,

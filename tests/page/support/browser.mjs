@@ -37,6 +37,7 @@ export async function openPage(browser, options = {}) {
 
 /** Waits until nothing is being asked or drawn any more. */
 export async function settled(page) {
-  await page.waitForLoadState('networkidle');
-  await page.waitForFunction(() => !document.querySelector('.is-stale, .face-working, .face-job'));
+  await page.waitForFunction(() => document.querySelector('.panel') && !document.body.dataset.busy);
+  // What the answers changed is drawn with the next frame.
+  await page.evaluate(() => new Promise((resolve) => requestAnimationFrame(() => requestAnimationFrame(resolve))));
 }

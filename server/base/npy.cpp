@@ -1,10 +1,10 @@
 #include "base/npy.h"
 
+#include <fmt/format.h>
+
 #include <algorithm>
 #include <array>
 #include <cstring>
-
-#include <fmt/format.h>
 
 #include "base/text.h"
 
@@ -14,7 +14,9 @@ namespace {
 
 constexpr std::array<unsigned char, 6> magic = {0x93, 'N', 'U', 'M', 'P', 'Y'};
 
-tl::unexpected<Error> damaged(std::string text) { return failure(ErrorCode::damaged_file, "NPY: " + std::move(text)); }
+tl::unexpected<Error> damaged(std::string text) {
+  return failure(ErrorCode::damaged_file, "NPY: " + std::move(text));
+}
 
 /// The text after 'name': in the head's dictionary, blanks skipped.
 std::string_view entry(std::string_view dictionary, std::string_view name) {
@@ -36,7 +38,8 @@ Expected<std::vector<std::size_t>> parse_shape(std::string_view text) {
     const auto extent = parse_whole_number(part);
     if (!extent || *extent < 0) return damaged("the shape holds something else than extents");
     shape.push_back(static_cast<std::size_t>(*extent));
-    if (__builtin_mul_overflow(count, std::max<std::size_t>(1, shape.back()), &count)) return damaged("the shape overflows");
+    if (__builtin_mul_overflow(count, std::max<std::size_t>(1, shape.back()), &count))
+      return damaged("the shape overflows");
   }
   return shape;
 }
@@ -58,13 +61,15 @@ std::size_t npy_element_bytes(std::string_view descr) {
   return found == known.end() ? 0 : found->second;
 }
 
-std::vector<std::byte> npy_image(std::string_view descr, std::span<const std::size_t> shape,
+std::vector<std::byte> npy_image(std::string_view descr,
+                                 std::span<const std::size_t> shape,
                                  std::span<const std::byte> data) {
   std::string extents;
   for (const std::size_t extent : shape) extents += fmt::format("{}, ", extent);
   if (shape.size() > 1) extents.resize(extents.size() - 2);
   if (shape.size() == 1) extents.pop_back();
-  std::string head = fmt::format("{{'descr': '{}', 'fortran_order': False, 'shape': ({}), }}", descr, extents);
+  std::string head =
+      fmt::format("{{'descr': '{}', 'fortran_order': False, 'shape': ({}), }}", descr, extents);
   constexpr std::size_t fixed = magic.size() + 2 + 2;
   const std::size_t padded = (fixed + head.size() + 1 + 63) / 64 * 64;
   head.resize(padded - fixed - 1, ' ');
@@ -81,7 +86,8 @@ std::vector<std::byte> npy_image(std::string_view descr, std::span<const std::si
 }
 
 Expected<NpyHeader> parse_npy_header(std::span<const std::byte> start) {
-  if (start.size() < 12 || std::memcmp(start.data(), magic.data(), magic.size()) != 0) return damaged("no such file");
+  if (start.size() < 12 || std::memcmp(start.data(), magic.data(), magic.size()) != 0)
+    return damaged("no such file");
   const auto byte = [&](std::size_t i) { return std::to_integer<std::size_t>(start[i]); };
   const bool is_long = byte(6) >= 2;
   const std::size_t fixed = is_long ? 12 : 10;
@@ -91,7 +97,8 @@ Expected<NpyHeader> parse_npy_header(std::span<const std::byte> start) {
   const std::string_view descr = entry(dictionary, "descr");
   if (descr.size() < 5 || descr.front() != '\'') return damaged("no element type");
   NpyHeader header{.descr = std::string(descr.substr(1, 3)), .data_offset = fixed + length};
-  if (descr[4] != '\'' || npy_element_bytes(header.descr) == 0) return damaged("an element type that is not read here");
+  if (descr[4] != '\'' || npy_element_bytes(header.descr) == 0)
+    return damaged("an element type that is not read here");
   if (!entry(dictionary, "fortran_order").starts_with("False")) return damaged("column-major data");
   auto shape = parse_shape(entry(dictionary, "shape"));
   if (!shape) return failure(shape);
@@ -107,7 +114,8 @@ Expected<NpyView> parse_npy(std::span<const std::byte> file) {
     if (__builtin_mul_overflow(bytes, extent, &bytes)) return damaged("the shape overflows");
   }
   const auto data = file.subspan(header->data_offset);
-  if (data.size() != bytes) return damaged(fmt::format("{} bytes of data where the shape has {}", data.size(), bytes));
+  if (data.size() != bytes)
+    return damaged(fmt::format("{} bytes of data where the shape has {}", data.size(), bytes));
   return NpyView{std::move(header->descr), std::move(header->shape), header->data_offset, data};
 }
 

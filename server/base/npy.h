@@ -29,7 +29,8 @@ struct NpyView {
 std::size_t npy_element_bytes(std::string_view descr);
 
 /// A whole file, version 1.0, row-major, data aligned to 64 bytes.
-std::vector<std::byte> npy_image(std::string_view descr, std::span<const std::size_t> shape,
+std::vector<std::byte> npy_image(std::string_view descr,
+                                 std::span<const std::size_t> shape,
                                  std::span<const std::byte> data);
 
 /// Reads the head from a file's first bytes (4096 are always enough for our own).

@@ -1,5 +1,5 @@
-// A folder of state files that is either whole or not there. A manifest holds a checksum for every piece of every file:
-// a torn or altered piece is found when it is read, and what is not read costs nothing.
+// A folder of state files that is either whole or not there. A manifest holds a checksum for every piece of
+// every file: a torn or altered piece is found when it is read, and what is not read costs nothing.
 #pragma once
 
 #include <cstddef>
@@ -32,6 +32,7 @@ class SealedFolderWriter {
   /// Writes the manifest over all files that lie in the folder, whoever put them there.
   ///
   ///   errors  io_error, disk_full
+  ///   throws  std::invalid_argument for a file whose name holds a blank
   Expected<void> seal() const;
 
  private:
@@ -39,13 +40,15 @@ class SealedFolderWriter {
   const std::filesystem::path folder_;
 };
 
-/// Reads a sealed folder. Files are opened once and stay open, so that a folder that is replaced meanwhile stays
-/// readable for those who have it.
+/// Reads a sealed folder. Files are opened once and stay open, so that a folder that is replaced meanwhile
+/// stays readable for those who have it.
 ///
 ///   threads  safe from any thread
 class SealedFolder {
  public:
-  /// errors  damaged_state: no manifest, or one that cannot be understood, or a file missing or of another size
+  /// errors  damaged_state: no manifest, or one that cannot be understood, or a file missing or of another
+  /// size;
+  ///         newer_state: sealed by a program of a later version
   static Expected<std::shared_ptr<const SealedFolder>> open(const FileSystem& files,
                                                             const std::filesystem::path& folder);
 
@@ -69,6 +72,7 @@ class SealedFolder {
   };
   explicit SealedFolder(std::filesystem::path folder) : folder_(std::move(folder)) {}
   tl::unexpected<Error> damaged(const std::string& name, std::string_view why) const;
+  Expected<std::vector<std::string>> manifest_lines(const FileSystem& files) const;
 
   const std::filesystem::path folder_;
   std::map<std::string, File> files_;

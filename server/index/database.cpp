@@ -27,9 +27,10 @@ ErrorCode code_of(int result) {
 }
 
 tl::unexpected<Error> sqlite_failure(sqlite3* database, int result) {
-  return failure(code_of(result),
-                 fmt::format("the index: {}", database != nullptr ? sqlite3_errmsg(database) : sqlite3_errstr(result)),
-                 "index.sqlite");
+  return failure(
+      code_of(result),
+      fmt::format("the index: {}", database != nullptr ? sqlite3_errmsg(database) : sqlite3_errstr(result)),
+      "index.sqlite");
 }
 
 }  // namespace
@@ -78,12 +79,18 @@ Expected<void> Query::run() {
 
 std::string Query::text(int column) const {
   const auto* text = reinterpret_cast<const char*>(sqlite3_column_text(statement_, column));
-  return text == nullptr ? std::string() : std::string(text, static_cast<std::size_t>(sqlite3_column_bytes(statement_, column)));
+  return text == nullptr
+             ? std::string()
+             : std::string(text, static_cast<std::size_t>(sqlite3_column_bytes(statement_, column)));
 }
 
-std::int64_t Query::whole(int column) const { return sqlite3_column_int64(statement_, column); }
+std::int64_t Query::whole(int column) const {
+  return sqlite3_column_int64(statement_, column);
+}
 
-double Query::real(int column) const { return sqlite3_column_double(statement_, column); }
+double Query::real(int column) const {
+  return sqlite3_column_double(statement_, column);
+}
 
 std::optional<double> Query::real_or_none(int column) const {
   if (sqlite3_column_type(statement_, column) == SQLITE_NULL) return std::nullopt;
@@ -98,9 +105,11 @@ Expected<std::unique_ptr<Connection>> Connection::open(const std::filesystem::pa
   std::unique_ptr<Connection> connection(new Connection(database));
   if (result != SQLITE_OK) return sqlite_failure(database, result);
   sqlite3_busy_timeout(database, 5000);
-  // A reader of a write-ahead log needs the log's shared index and so a writable handle; the pragma keeps it to reading.
-  const std::string settings = can_write ? "PRAGMA journal_mode = WAL; PRAGMA synchronous = FULL; PRAGMA foreign_keys = ON;"
-                                         : "PRAGMA query_only = ON;";
+  // A reader of a write-ahead log needs the log's shared index and so a writable handle; the pragma keeps it
+  // to reading.
+  const std::string settings =
+      can_write ? "PRAGMA journal_mode = WAL; PRAGMA synchronous = FULL; PRAGMA foreign_keys = ON;"
+                : "PRAGMA query_only = ON;";
   if (auto set = connection->execute(settings); !set) return failure(set);
   return connection;
 }
@@ -129,6 +138,10 @@ Expected<void> Connection::execute(const std::string& sql) {
   return {};
 }
 
+std::int64_t Connection::changed_rows() const {
+  return sqlite3_total_changes64(database_);
+}
+
 Expected<Transaction> Transaction::begin(Connection& connection) {
   if (auto begun = connection.execute("BEGIN IMMEDIATE"); !begun) return failure(begun);
   return Transaction(connection);
@@ -155,8 +168,8 @@ Expected<void> migrate(Connection& connection) {
   }
   if (version > migrations().back().version) {
     return failure(ErrorCode::newer_state,
-                   fmt::format("the index has version {}, this program knows {}; use the newer program", version,
-                               migrations().back().version),
+                   fmt::format("the index has version {}, this program knows {}; use the newer program",
+                               version, migrations().back().version),
                    "index.sqlite");
   }
   for (const Migration& migration : migrations()) {
@@ -164,7 +177,8 @@ Expected<void> migrate(Connection& connection) {
     auto transaction = Transaction::begin(connection);
     if (!transaction) return failure(transaction);
     if (auto done = connection.execute(std::string(migration.sql)); !done) return done;
-    if (auto noted = connection.execute(fmt::format("PRAGMA user_version = {}", migration.version)); !noted) return noted;
+    if (auto noted = connection.execute(fmt::format("PRAGMA user_version = {}", migration.version)); !noted)
+      return noted;
     if (auto committed = transaction->commit(); !committed) return committed;
   }
   return {};

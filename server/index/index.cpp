@@ -1,6 +1,7 @@
 #include "index/index.h"
 
 #include <fcntl.h>
+#include <fmt/format.h>
 #include <sys/file.h>
 #include <unistd.h>
 
@@ -8,8 +9,6 @@
 #include <array>
 #include <cerrno>
 #include <cmath>
-
-#include <fmt/format.h>
 
 #include "base/text.h"
 #include "index/database.h"
@@ -22,30 +21,34 @@ namespace {
 
 constexpr std::string_view view_columns =
     "id, path, dataset, campaign, campaign_name, run, run_name, source, note, azimuth_deg, elevation_deg, "
-    "aperture_diameter_m, reference_length_m, mach, velocity_m_s, density_kg_m3, temperature_k, wavelength_m, "
-    "gladstone_dale_m3_kg, frames, rows, columns, points, finite_frames, frame_rate_hz, duration_s, start_s, size_bytes, "
-    "mtime_ns, inode, metadata_digest, folder, state, indexed_at_ms, checks, opd_rms_mean_m, opd_rms_overall_m";
+    "aperture_diameter_m, reference_length_m, mach, velocity_m_s, density_kg_m3, temperature_k, "
+    "wavelength_m, "
+    "gladstone_dale_m3_kg, frames, rows, columns, points, finite_frames, frame_rate_hz, duration_s, start_s, "
+    "size_bytes, "
+    "mtime_ns, inode, metadata_digest, folder, state, indexed_at_ms, checks, opd_rms_mean_m, "
+    "opd_rms_overall_m";
 constexpr int view_column_count = 37;
 
-constexpr std::array range_columns = {"azimuth_deg", "elevation_deg",       "mach",          "velocity_m_s",
-                                      "frames",      "aperture_diameter_m", "frame_rate_hz", "opd_rms_mean_m",
-                                      "rows",        "columns",             "duration_s"};
+constexpr std::array range_columns = {
+    "azimuth_deg",   "elevation_deg",  "mach", "velocity_m_s", "frames",    "aperture_diameter_m",
+    "frame_rate_hz", "opd_rms_mean_m", "rows", "columns",      "duration_s"};
 constexpr std::array sort_columns = {"id",     "azimuth_deg",   "elevation_deg", "mach",
                                      "frames", "frame_rate_hz", "opd_rms_mean_m"};
 
 ViewRecord view_of(const Query& row) {
   int c = 0;
   ViewRecord view;
-  for (auto* text : {&view.id, &view.path, &view.dataset, &view.campaign, &view.campaign_name, &view.run, &view.run_name,
-                     &view.source, &view.note}) {
+  for (auto* text : {&view.id, &view.path, &view.dataset, &view.campaign, &view.campaign_name, &view.run,
+                     &view.run_name, &view.source, &view.note}) {
     *text = row.text(c++);
   }
-  for (auto* number : {&view.azimuth_deg, &view.elevation_deg, &view.aperture_diameter_m, &view.reference_length_m,
-                       &view.mach, &view.velocity_m_s, &view.density_kg_m3, &view.temperature_k, &view.wavelength_m,
-                       &view.gladstone_dale_m3_kg}) {
+  for (auto* number : {&view.azimuth_deg, &view.elevation_deg, &view.aperture_diameter_m,
+                       &view.reference_length_m, &view.mach, &view.velocity_m_s, &view.density_kg_m3,
+                       &view.temperature_k, &view.wavelength_m, &view.gladstone_dale_m3_kg}) {
     *number = row.real_or_none(c++);
   }
-  for (auto* size : {&view.frames, &view.rows, &view.columns, &view.points, &view.finite_frames}) *size = row.size(c++);
+  for (auto* size : {&view.frames, &view.rows, &view.columns, &view.points, &view.finite_frames})
+    *size = row.size(c++);
   for (auto* number : {&view.frame_rate_hz, &view.duration_s, &view.start_s}) *number = row.real(c++);
   view.stamp.size_bytes = row.size(c++);
   view.stamp.mtime_ns = row.whole(c++);
@@ -59,27 +62,31 @@ ViewRecord view_of(const Query& row) {
 }
 
 void bind_view(Query& query, const ViewRecord& view) {
-  for (const auto* text : {&view.id, &view.path, &view.dataset, &view.campaign, &view.campaign_name, &view.run,
-                           &view.run_name, &view.source, &view.note}) {
+  for (const auto* text : {&view.id, &view.path, &view.dataset, &view.campaign, &view.campaign_name,
+                           &view.run, &view.run_name, &view.source, &view.note}) {
     query.bind(std::string_view(*text));
   }
-  for (const auto& number : {view.azimuth_deg, view.elevation_deg, view.aperture_diameter_m, view.reference_length_m,
-                             view.mach, view.velocity_m_s, view.density_kg_m3, view.temperature_k, view.wavelength_m,
-                             view.gladstone_dale_m3_kg}) {
+  for (const auto& number : {view.azimuth_deg, view.elevation_deg, view.aperture_diameter_m,
+                             view.reference_length_m, view.mach, view.velocity_m_s, view.density_kg_m3,
+                             view.temperature_k, view.wavelength_m, view.gladstone_dale_m3_kg}) {
     query.bind(number);
   }
-  for (const auto size : {view.frames, view.rows, view.columns, view.points, view.finite_frames}) query.bind(size);
+  for (const auto size : {view.frames, view.rows, view.columns, view.points, view.finite_frames})
+    query.bind(size);
   for (const auto number : {view.frame_rate_hz, view.duration_s, view.start_s}) query.bind(number);
   query.bind(view.stamp.size_bytes).bind(view.stamp.mtime_ns).bind(view.stamp.inode);
-  for (const auto* text : {&view.metadata_digest, &view.folder, &view.state}) query.bind(std::string_view(*text));
+  for (const auto* text : {&view.metadata_digest, &view.folder, &view.state})
+    query.bind(std::string_view(*text));
   query.bind(view.indexed_at_ms).bind(std::string_view(view.checks));
   query.bind(view.opd_rms_mean_m).bind(view.opd_rms_overall_m);
 }
 
 /// One row of one statement, or nothing.
 template <class Value, class Take>
-Expected<std::optional<Value>> one(Connection& connection, const std::string& sql,
-                                   const std::vector<std::string>& texts, Take take) {
+Expected<std::optional<Value>> one(Connection& connection,
+                                   const std::string& sql,
+                                   const std::vector<std::string>& texts,
+                                   Take take) {
   auto query = connection.query(sql);
   if (!query) return failure(query);
   for (const auto& text : texts) query->bind(std::string_view(text));
@@ -122,7 +129,8 @@ std::string angle_text(double degrees, int digits) {
 
 std::string wanted_view_id(const ViewRecord& view) {
   if (view.azimuth_deg && view.elevation_deg) {
-    return fmt::format("{}-az{}-el{}", view.run, angle_text(*view.azimuth_deg, 3), angle_text(*view.elevation_deg, 2));
+    return fmt::format("{}-az{}-el{}", view.run, angle_text(*view.azimuth_deg, 3),
+                       angle_text(*view.elevation_deg, 2));
   }
   const std::string stem = slug(fs::path(view.path).stem().string());
   return view.run + "-" + (stem.empty() ? "view" : stem);
@@ -134,40 +142,67 @@ Expected<bool> exists(Connection& connection, const std::string& sql, const std:
   return found->has_value();
 }
 
-std::string slug_or(std::string_view name, std::string_view otherwise) {
-  std::string made = slug(name);
-  return made.empty() ? std::string(otherwise) : made;
+/// The first of `wanted`, `otherwise`, otherwise-2, otherwise-3 … that `is_used` does not hold for.
+Expected<std::string> free_id(const std::string& wanted,
+                              const std::string& otherwise,
+                              const std::function<Expected<bool>(const std::string&)>& is_used) {
+  std::string id = wanted;
+  for (int number = wanted == otherwise ? 2 : 1;; ++number) {
+    const auto used = is_used(id);
+    if (!used) return failure(used);
+    if (!*used) return id;
+    id = number == 1 ? otherwise : fmt::format("{}-{}", otherwise, number);
+  }
 }
 
-/// Gives a view that the index does not know its ids.
+/// A name made fit for an address; a name without any fit letter becomes "unnamed", and the number after it
+/// tells it from others.
+std::string id_of_name(std::string_view name) {
+  std::string made = slug(name);
+  return made.empty() ? "unnamed" : made;
+}
+
+/// Gives a view its ids. Names that differ have ids that differ, even when they look alike in an address.
 Expected<void> name_view(Connection& connection, ViewRecord& view) {
-  view.campaign = slug_or(view.campaign_name, "unnamed");
-  view.run = slug_or(view.run_name, "unnamed");
-  const auto taken =
-      exists(connection, "SELECT 1 FROM view WHERE run = ? AND campaign <> ? LIMIT 1", {view.run, view.campaign});
-  if (!taken) return failure(taken);
-  if (*taken) view.run = view.campaign + "-" + view.run;
-  const auto known = one<std::string>(connection, "SELECT id FROM view WHERE path = ? AND dataset = ?",
-                                      {view.path, view.dataset}, [](const Query& row) { return row.text(0); });
+  // The view's own row does not count: it is about to be replaced.
+  const std::string others = " AND NOT (path = ? AND dataset = ?) LIMIT 1";
+  const std::string campaign = id_of_name(view.campaign_name), run = id_of_name(view.run_name);
+  auto id = free_id(campaign, campaign, [&](const std::string& candidate) {
+    return exists(connection, "SELECT 1 FROM view WHERE campaign = ? AND campaign_name <> ?" + others,
+                  {candidate, view.campaign_name, view.path, view.dataset});
+  });
+  if (!id) return failure(id);
+  view.campaign = *id;
+  id = free_id(run, view.campaign + "-" + run, [&](const std::string& candidate) {
+    return exists(connection,
+                  "SELECT 1 FROM view WHERE run = ? AND (campaign <> ? OR run_name <> ?)" + others,
+                  {candidate, view.campaign, view.run_name, view.path, view.dataset});
+  });
+  if (!id) return failure(id);
+  view.run = *id;
+  const auto known =
+      one<std::string>(connection, "SELECT id FROM view WHERE path = ? AND dataset = ?",
+                       {view.path, view.dataset}, [](const Query& row) { return row.text(0); });
   if (!known) return failure(known);
   if (*known) {
     view.id = **known;
     return {};
   }
   const std::string wanted = wanted_view_id(view);
-  view.id = wanted;
-  for (int number = 2;; ++number) {
-    const auto is_used = exists(connection, "SELECT 1 FROM view WHERE id = ?", {view.id});
-    if (!is_used) return failure(is_used);
-    if (!*is_used) return {};
-    view.id = fmt::format("{}-{}", wanted, number);
-  }
+  id = free_id(wanted, wanted, [&](const std::string& candidate) {
+    return exists(connection, "SELECT 1 FROM view WHERE id = ?", {candidate});
+  });
+  if (!id) return failure(id);
+  view.id = *id;
+  return {};
 }
 
 constexpr std::string_view run_sql =
-    "SELECT run, max(run_name), campaign, max(campaign_name), max(source), count(*), min(azimuth_deg), max(azimuth_deg), "
+    "SELECT run, max(run_name), campaign, max(campaign_name), max(source), count(*), min(azimuth_deg), "
+    "max(azimuth_deg), "
     "min(elevation_deg), max(elevation_deg), "
-    "iif(min(mach) = max(mach), min(mach), NULL), iif(min(velocity_m_s) = max(velocity_m_s), min(velocity_m_s), NULL), "
+    "iif(min(mach) = max(mach), min(mach), NULL), iif(min(velocity_m_s) = max(velocity_m_s), "
+    "min(velocity_m_s), NULL), "
     "iif(min(density_kg_m3) = max(density_kg_m3), min(density_kg_m3), NULL), "
     "iif(min(temperature_k) = max(temperature_k), min(temperature_k), NULL), "
     "iif(min(reference_length_m) = max(reference_length_m), min(reference_length_m), NULL) FROM view ";
@@ -200,7 +235,8 @@ Expected<void> quick_check(Connection& connection) {
       one<std::string>(connection, "PRAGMA quick_check(1)", {}, [](const Query& row) { return row.text(0); });
   if (!found) return failure(found);
   if (*found && **found != "ok") {
-    return failure(ErrorCode::damaged_state, "the index does not pass its check: " + **found + "; remove it and index anew",
+    return failure(ErrorCode::damaged_state,
+                   "the index does not pass its check: " + **found + "; remove it and index anew",
                    "index.sqlite");
   }
   return {};
@@ -208,8 +244,8 @@ Expected<void> quick_check(Connection& connection) {
 
 }  // namespace
 
-/// The lock file holds the number of the process that may write. It is emptied on a clean close, so that a number left
-/// behind tells of an unclean stop.
+/// The lock file holds the number of the process that may write. It is emptied on a clean close, so that a
+/// number left behind tells of an unclean stop.
 class Index::Lock {
  public:
   static Expected<std::unique_ptr<Lock>> take(const fs::path& file) {
@@ -219,10 +255,11 @@ class Index::Lock {
     std::array<char, 32> holder{};
     const ssize_t got = ::pread(descriptor, holder.data(), holder.size() - 1, 0);
     if (::flock(descriptor, LOCK_EX | LOCK_NB) != 0) {
-      return failure(ErrorCode::state_locked,
-                     fmt::format("process {} writes to this state folder already; stop it, or start with --reader",
-                                 got > 0 ? holder.data() : "unknown"),
-                     file.parent_path().string());
+      return failure(
+          ErrorCode::state_locked,
+          fmt::format("process {} writes to this state folder already; stop it, or start with --reader",
+                      got > 0 ? holder.data() : "unknown"),
+          file.parent_path().string());
     }
     lock->was_left_behind_ = got > 0;
     const std::string mine = fmt::format("{}", ::getpid());
@@ -271,7 +308,8 @@ Expected<std::unique_ptr<Index>> Index::open_for_writing(const fs::path& state) 
 
 Expected<std::unique_ptr<Index>> Index::open_for_reading(const fs::path& state) {
   if (!fs::exists(state / "index.sqlite")) {
-    return failure(ErrorCode::not_indexed, "there is no index here; bentlight index makes one", state.string());
+    return failure(ErrorCode::not_indexed, "there is no index here; bentlight index makes one",
+                   state.string());
   }
   std::unique_ptr<Index> index(new Index(state));
   if (const auto counts = index->counts(); !counts) return failure(counts);
@@ -305,7 +343,9 @@ Expected<void> Index::writing(const std::function<Expected<void>(Connection&)>& 
   if (!writer_) return failure(ErrorCode::internal, "this index was opened for reading");
   auto transaction = Transaction::begin(*writer_);
   if (!transaction) return failure(transaction);
+  const std::int64_t before = writer_->changed_rows();
   if (auto changed = change(*writer_); !changed) return changed;
+  if (writer_->changed_rows() == before) return {};
   if (auto risen = writer_->execute("UPDATE revision SET number = number + 1"); !risen) return risen;
   return transaction->commit();
 }
@@ -315,7 +355,8 @@ Expected<ViewRecord> Index::upsert_view(ViewRecord record) {
     if (auto named = name_view(connection, record); !named) return named;
     std::string places = "?";
     for (int i = 1; i < view_column_count; ++i) places += ", ?";
-    auto insert = connection.query(fmt::format("INSERT OR REPLACE INTO view ({}) VALUES ({})", view_columns, places));
+    auto insert =
+        connection.query(fmt::format("INSERT OR REPLACE INTO view ({}) VALUES ({})", view_columns, places));
     if (!insert) return failure(insert);
     bind_view(*insert, record);
     if (auto done = insert->run(); !done) return done;
@@ -329,7 +370,7 @@ Expected<ViewRecord> Index::upsert_view(ViewRecord record) {
 
 Expected<void> Index::mark_missing(const std::string& path) {
   return writing([&](Connection& connection) -> Expected<void> {
-    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ?");
+    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ? AND state <> 'missing'");
     if (!mark) return failure(mark);
     if (auto done = mark->bind(std::string_view(path)).run(); !done) return done;
     auto forget = connection.query("DELETE FROM refusal WHERE path = ?");
@@ -338,25 +379,38 @@ Expected<void> Index::mark_missing(const std::string& path) {
   });
 }
 
-Expected<void> Index::put_refusal(const RefusalRecord& refusal) {
+Expected<void> Index::mark_present(const std::string& path) {
   return writing([&](Connection& connection) -> Expected<void> {
-    auto put = connection.query("INSERT OR REPLACE INTO refusal VALUES (?, ?, ?, ?, ?, ?, ?)");
-    if (!put) return failure(put);
-    put->bind(std::string_view(refusal.path)).bind(std::string_view(refusal.code)).bind(std::string_view(refusal.text));
-    put->bind(refusal.refused_at_ms).bind(refusal.stamp.size_bytes).bind(refusal.stamp.mtime_ns).bind(refusal.stamp.inode);
-    if (auto done = put->run(); !done) return done;
-    // A view of this path was of another state of the file, which is gone.
-    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ?");
+    auto mark = connection.query("UPDATE view SET state = 'ready' WHERE path = ? AND state <> 'ready'");
     if (!mark) return failure(mark);
-    return mark->bind(std::string_view(refusal.path)).run();
+    return mark->bind(std::string_view(path)).run();
   });
 }
 
-Expected<void> Index::forget_refusal(const std::string& path) {
+Expected<void> Index::put_refusal(const RefusalRecord& refusal) {
   return writing([&](Connection& connection) -> Expected<void> {
-    auto forget = connection.query("DELETE FROM refusal WHERE path = ?");
-    if (!forget) return failure(forget);
-    return forget->bind(std::string_view(path)).run();
+    // The same refusal again changes nothing.
+    auto put = connection.query(
+        "INSERT INTO refusal (path, code, text, refused_at_ms, size_bytes, mtime_ns, inode) VALUES (?, ?, ?, "
+        "?, ?, ?, ?) "
+        "ON CONFLICT (path) DO UPDATE SET code = excluded.code, text = excluded.text, "
+        "refused_at_ms = excluded.refused_at_ms, size_bytes = excluded.size_bytes, mtime_ns = "
+        "excluded.mtime_ns, "
+        "inode = excluded.inode WHERE (code, text, size_bytes, mtime_ns, inode) IS NOT "
+        "(excluded.code, excluded.text, excluded.size_bytes, excluded.mtime_ns, excluded.inode)");
+    if (!put) return failure(put);
+    put->bind(std::string_view(refusal.path))
+        .bind(std::string_view(refusal.code))
+        .bind(std::string_view(refusal.text));
+    put->bind(refusal.refused_at_ms)
+        .bind(refusal.stamp.size_bytes)
+        .bind(refusal.stamp.mtime_ns)
+        .bind(refusal.stamp.inode);
+    if (auto done = put->run(); !done) return done;
+    // A view of this path was of another state of the file, which is gone.
+    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ? AND state <> 'missing'");
+    if (!mark) return failure(mark);
+    return mark->bind(std::string_view(refusal.path)).run();
   });
 }
 
@@ -393,9 +447,8 @@ Expected<Page<ViewRecord>> Index::views(const ViewFilter& filter) const {
     if (range.low) where += fmt::format(" AND {} >= ?", column), numbers.push_back(*range.low);
     if (range.high) where += fmt::format(" AND {} <= ?", column), numbers.push_back(*range.high);
   }
-  const std::string sql =
-      fmt::format("SELECT {} FROM view{} ORDER BY {} {}, id LIMIT ? OFFSET ?", view_columns, where, filter.sort,
-                  filter.descending ? "DESC" : "ASC");
+  const std::string sql = fmt::format("SELECT {} FROM view{} ORDER BY {} {}, id LIMIT ? OFFSET ?",
+                                      view_columns, where, filter.sort, filter.descending ? "DESC" : "ASC");
   return reading<Page<ViewRecord>>([&](Connection& connection) -> Expected<Page<ViewRecord>> {
     auto query = connection.query(sql);
     if (!query) return failure(query);
@@ -409,7 +462,8 @@ Expected<Page<ViewRecord>> Index::views(const ViewFilter& filter) const {
 Expected<std::vector<ViewRecord>> Index::views_of_run(const std::string& run) const {
   return reading<std::vector<ViewRecord>>([&](Connection& connection) -> Expected<std::vector<ViewRecord>> {
     static const std::string sql = fmt::format(
-        "SELECT {} FROM view WHERE run = ? AND state = 'ready' ORDER BY azimuth_deg, elevation_deg, id", view_columns);
+        "SELECT {} FROM view WHERE run = ? AND state = 'ready' ORDER BY azimuth_deg, elevation_deg, id",
+        view_columns);
     auto query = connection.query(sql);
     if (!query) return failure(query);
     query->bind(std::string_view(run));
@@ -430,10 +484,13 @@ Expected<RunRecord> Index::run(const std::string& id) const {
 Expected<Page<RunRecord>> Index::runs(const RunFilter& filter, std::size_t limit, std::size_t offset) const {
   return reading<Page<RunRecord>>([&](Connection& connection) -> Expected<Page<RunRecord>> {
     static const std::string sql = fmt::format(
-        "{}WHERE (?1 = '' OR campaign = ?1) AND (?2 = '' OR source = ?2) GROUP BY run ORDER BY run LIMIT ?3 OFFSET ?4", run_sql);
+        "{}WHERE (?1 = '' OR campaign = ?1) AND (?2 = '' OR source = ?2) GROUP BY run ORDER BY run LIMIT ?3 "
+        "OFFSET ?4",
+        run_sql);
     auto query = connection.query(sql);
     if (!query) return failure(query);
-    query->bind(std::string_view(filter.campaign.value_or(""))).bind(std::string_view(filter.source.value_or("")));
+    query->bind(std::string_view(filter.campaign.value_or("")))
+        .bind(std::string_view(filter.source.value_or("")));
     query->bind(std::uint64_t{limit + 1}).bind(std::uint64_t{offset});
     return page<RunRecord>(*query, limit, run_of);
   });
@@ -442,23 +499,27 @@ Expected<Page<RunRecord>> Index::runs(const RunFilter& filter, std::size_t limit
 Expected<Page<CampaignRecord>> Index::campaigns(std::size_t limit, std::size_t offset) const {
   return reading<Page<CampaignRecord>>([&](Connection& connection) -> Expected<Page<CampaignRecord>> {
     auto query = connection.query(
-        "SELECT campaign, max(campaign_name), count(DISTINCT run), count(*) FROM view GROUP BY campaign ORDER BY campaign "
+        "SELECT campaign, max(campaign_name), count(DISTINCT run), count(*) FROM view GROUP BY campaign "
+        "ORDER BY campaign "
         "LIMIT ? OFFSET ?");
     if (!query) return failure(query);
     query->bind(std::uint64_t{limit + 1}).bind(std::uint64_t{offset});
     return page<CampaignRecord>(*query, limit, [](const Query& row) {
-      return CampaignRecord{.id = row.text(0), .name = row.text(1), .runs = row.size(2), .views = row.size(3)};
+      return CampaignRecord{
+          .id = row.text(0), .name = row.text(1), .runs = row.size(2), .views = row.size(3)};
     });
   });
 }
 
 Expected<Page<RefusalRecord>> Index::refusals(std::size_t limit, std::size_t offset) const {
   return reading<Page<RefusalRecord>>([&](Connection& connection) -> Expected<Page<RefusalRecord>> {
-    auto query = connection.query("SELECT path, code, text, refused_at_ms FROM refusal ORDER BY path LIMIT ? OFFSET ?");
+    auto query = connection.query(
+        "SELECT path, code, text, refused_at_ms FROM refusal ORDER BY path LIMIT ? OFFSET ?");
     if (!query) return failure(query);
     query->bind(std::uint64_t{limit + 1}).bind(std::uint64_t{offset});
     return page<RefusalRecord>(*query, limit, [](const Query& row) {
-      return RefusalRecord{.path = row.text(0), .code = row.text(1), .text = row.text(2), .refused_at_ms = row.whole(3)};
+      return RefusalRecord{
+          .path = row.text(0), .code = row.text(1), .text = row.text(2), .refused_at_ms = row.whole(3)};
     });
   });
 }
@@ -467,7 +528,8 @@ Expected<IndexCounts> Index::counts() const {
   return reading<IndexCounts>([](Connection& connection) -> Expected<IndexCounts> {
     auto found = one<IndexCounts>(
         connection,
-        "SELECT count(DISTINCT campaign), count(DISTINCT run), count(*), count(*) FILTER (WHERE state = 'missing'), "
+        "SELECT count(DISTINCT campaign), count(DISTINCT run), count(*), count(*) FILTER (WHERE state = "
+        "'missing'), "
         "(SELECT count(*) FROM refusal), coalesce(sum(frames), 0), coalesce(sum(size_bytes), 0), "
         "(SELECT number FROM revision) FROM view",
         {}, [](const Query& row) {
@@ -489,7 +551,8 @@ Expected<std::vector<KnownFile>> Index::known_files() const {
   return reading<std::vector<KnownFile>>([](Connection& connection) -> Expected<std::vector<KnownFile>> {
     // A path that was refused last is known by its refusal.
     auto query = connection.query(
-        "SELECT path, size_bytes, mtime_ns, inode, 'refused' FROM refusal UNION ALL SELECT path, size_bytes, mtime_ns, "
+        "SELECT path, size_bytes, mtime_ns, inode, 'refused' FROM refusal UNION ALL SELECT path, size_bytes, "
+        "mtime_ns, "
         "inode, state FROM view WHERE path NOT IN (SELECT path FROM refusal)");
     if (!query) return failure(query);
     return all<KnownFile>(*query, [](const Query& row) {

@@ -1,4 +1,5 @@
-// The index: which views exist, under which conditions, what was refused. One SQLite database in the state folder.
+// The index: which views exist, under which conditions, what was refused. One SQLite database in the state
+// folder.
 #pragma once
 
 #include <cstdint>
@@ -58,7 +59,8 @@ struct RefusalRecord {
 };
 
 struct IndexCounts {
-  std::uint64_t campaigns = 0, runs = 0, views = 0, missing = 0, refusals = 0, frames = 0, bytes = 0, revision = 0;
+  std::uint64_t campaigns = 0, runs = 0, views = 0, missing = 0, refusals = 0, frames = 0, bytes = 0,
+                revision = 0;
 };
 
 /// A file that the index knows, for telling what is new.
@@ -95,21 +97,28 @@ struct Page {
 ///   threads  safe from any thread: readers have connections of their own, writers take turns
 class Index {
  public:
-  /// Makes the folder when it is not there, migrates an older index, and keeps other writers out until it is closed.
+  /// Makes the folder when it is not there, migrates an older index, and keeps other writers out until it is
+  /// closed.
   ///
-  ///   errors  state_locked naming the process that has it, newer_state, damaged_state, permission_denied, disk_full
+  ///   errors  state_locked naming the process that has it, newer_state, damaged_state, permission_denied,
+  ///   disk_full
   static Expected<std::unique_ptr<Index>> open_for_writing(const std::filesystem::path& state);
 
   /// errors  not_indexed when there is no index; newer_state, damaged_state
   static Expected<std::unique_ptr<Index>> open_for_reading(const std::filesystem::path& state);
   ~Index();
 
-  /// Keeps a view. Its id stays with its path and dataset; a new one is made of run and angles. A refusal of the same
-  /// path is forgotten. Gives the record as kept.
+  // Each of the following is one transaction; the revision rises if it changed anything.
+
+  /// Keeps a view. Its id stays with its path and dataset; a new one is made of run and angles. A refusal of
+  /// the same path is forgotten. Gives the record as kept.
   Expected<ViewRecord> upsert_view(ViewRecord record);
+  /// The file is gone: its views keep their summaries, a refusal of it is forgotten.
   Expected<void> mark_missing(const std::string& path);
+  /// The file is back as it was.
+  Expected<void> mark_present(const std::string& path);
+  /// Says why a file is not indexed. Views of its path were of another state of the file and become missing.
   Expected<void> put_refusal(const RefusalRecord& refusal);
-  Expected<void> forget_refusal(const std::string& path);
 
   /// errors  unknown_view
   Expected<ViewRecord> view(const std::string& id) const;

@@ -138,10 +138,6 @@ Expected<void> Connection::execute(const std::string& sql) {
   return {};
 }
 
-std::int64_t Connection::changed_rows() const {
-  return sqlite3_total_changes64(database_);
-}
-
 Expected<Transaction> Transaction::begin(Connection& connection) {
   if (auto begun = connection.execute("BEGIN IMMEDIATE"); !begun) return failure(begun);
   return Transaction(connection);

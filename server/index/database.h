@@ -71,9 +71,6 @@ class Connection {
   Expected<Query> query(std::string_view sql);
   Expected<void> execute(const std::string& sql);
 
-  /// Rows inserted, changed or deleted since the connection was opened.
-  std::int64_t changed_rows() const;
-
  private:
   explicit Connection(sqlite3* database) : database_(database) {}
   sqlite3* database_;

@@ -142,44 +142,19 @@ Expected<bool> exists(Connection& connection, const std::string& sql, const std:
   return found->has_value();
 }
 
-/// The first of `wanted`, `otherwise`, otherwise-2, otherwise-3 … that `is_used` does not hold for.
-Expected<std::string> free_id(const std::string& wanted,
-                              const std::string& otherwise,
-                              const std::function<Expected<bool>(const std::string&)>& is_used) {
-  std::string id = wanted;
-  for (int number = wanted == otherwise ? 2 : 1;; ++number) {
-    const auto used = is_used(id);
-    if (!used) return failure(used);
-    if (!*used) return id;
-    id = number == 1 ? otherwise : fmt::format("{}-{}", otherwise, number);
-  }
-}
-
-/// A name made fit for an address; a name without any fit letter becomes "unnamed", and the number after it
-/// tells it from others.
-std::string id_of_name(std::string_view name) {
+std::string slug_or(std::string_view name, std::string_view otherwise) {
   std::string made = slug(name);
-  return made.empty() ? "unnamed" : made;
+  return made.empty() ? std::string(otherwise) : made;
 }
 
-/// Gives a view its ids. Names that differ have ids that differ, even when they look alike in an address.
+/// Gives a view that the index does not know its ids.
 Expected<void> name_view(Connection& connection, ViewRecord& view) {
-  // The view's own row does not count: it is about to be replaced.
-  const std::string others = " AND NOT (path = ? AND dataset = ?) LIMIT 1";
-  const std::string campaign = id_of_name(view.campaign_name), run = id_of_name(view.run_name);
-  auto id = free_id(campaign, campaign, [&](const std::string& candidate) {
-    return exists(connection, "SELECT 1 FROM view WHERE campaign = ? AND campaign_name <> ?" + others,
-                  {candidate, view.campaign_name, view.path, view.dataset});
-  });
-  if (!id) return failure(id);
-  view.campaign = *id;
-  id = free_id(run, view.campaign + "-" + run, [&](const std::string& candidate) {
-    return exists(connection,
-                  "SELECT 1 FROM view WHERE run = ? AND (campaign <> ? OR run_name <> ?)" + others,
-                  {candidate, view.campaign, view.run_name, view.path, view.dataset});
-  });
-  if (!id) return failure(id);
-  view.run = *id;
+  view.campaign = slug_or(view.campaign_name, "unnamed");
+  view.run = slug_or(view.run_name, "unnamed");
+  const auto taken = exists(connection, "SELECT 1 FROM view WHERE run = ? AND campaign <> ? LIMIT 1",
+                            {view.run, view.campaign});
+  if (!taken) return failure(taken);
+  if (*taken) view.run = view.campaign + "-" + view.run;
   const auto known =
       one<std::string>(connection, "SELECT id FROM view WHERE path = ? AND dataset = ?",
                        {view.path, view.dataset}, [](const Query& row) { return row.text(0); });
@@ -189,12 +164,13 @@ Expected<void> name_view(Connection& connection, ViewRecord& view) {
     return {};
   }
   const std::string wanted = wanted_view_id(view);
-  id = free_id(wanted, wanted, [&](const std::string& candidate) {
-    return exists(connection, "SELECT 1 FROM view WHERE id = ?", {candidate});
-  });
-  if (!id) return failure(id);
-  view.id = *id;
-  return {};
+  view.id = wanted;
+  for (int number = 2;; ++number) {
+    const auto is_used = exists(connection, "SELECT 1 FROM view WHERE id = ?", {view.id});
+    if (!is_used) return failure(is_used);
+    if (!*is_used) return {};
+    view.id = fmt::format("{}-{}", wanted, number);
+  }
 }
 
 constexpr std::string_view run_sql =
@@ -343,9 +319,7 @@ Expected<void> Index::writing(const std::function<Expected<void>(Connection&)>& 
   if (!writer_) return failure(ErrorCode::internal, "this index was opened for reading");
   auto transaction = Transaction::begin(*writer_);
   if (!transaction) return failure(transaction);
-  const std::int64_t before = writer_->changed_rows();
   if (auto changed = change(*writer_); !changed) return changed;
-  if (writer_->changed_rows() == before) return {};
   if (auto risen = writer_->execute("UPDATE revision SET number = number + 1"); !risen) return risen;
   return transaction->commit();
 }
@@ -370,7 +344,7 @@ Expected<ViewRecord> Index::upsert_view(ViewRecord record) {
 
 Expected<void> Index::mark_missing(const std::string& path) {
   return writing([&](Connection& connection) -> Expected<void> {
-    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ? AND state <> 'missing'");
+    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ?");
     if (!mark) return failure(mark);
     if (auto done = mark->bind(std::string_view(path)).run(); !done) return done;
     auto forget = connection.query("DELETE FROM refusal WHERE path = ?");
@@ -379,25 +353,9 @@ Expected<void> Index::mark_missing(const std::string& path) {
   });
 }
 
-Expected<void> Index::mark_present(const std::string& path) {
-  return writing([&](Connection& connection) -> Expected<void> {
-    auto mark = connection.query("UPDATE view SET state = 'ready' WHERE path = ? AND state <> 'ready'");
-    if (!mark) return failure(mark);
-    return mark->bind(std::string_view(path)).run();
-  });
-}
-
 Expected<void> Index::put_refusal(const RefusalRecord& refusal) {
   return writing([&](Connection& connection) -> Expected<void> {
-    // The same refusal again changes nothing.
-    auto put = connection.query(
-        "INSERT INTO refusal (path, code, text, refused_at_ms, size_bytes, mtime_ns, inode) VALUES (?, ?, ?, "
-        "?, ?, ?, ?) "
-        "ON CONFLICT (path) DO UPDATE SET code = excluded.code, text = excluded.text, "
-        "refused_at_ms = excluded.refused_at_ms, size_bytes = excluded.size_bytes, mtime_ns = "
-        "excluded.mtime_ns, "
-        "inode = excluded.inode WHERE (code, text, size_bytes, mtime_ns, inode) IS NOT "
-        "(excluded.code, excluded.text, excluded.size_bytes, excluded.mtime_ns, excluded.inode)");
+    auto put = connection.query("INSERT OR REPLACE INTO refusal VALUES (?, ?, ?, ?, ?, ?, ?)");
     if (!put) return failure(put);
     put->bind(std::string_view(refusal.path))
         .bind(std::string_view(refusal.code))
@@ -408,9 +366,17 @@ Expected<void> Index::put_refusal(const RefusalRecord& refusal) {
         .bind(refusal.stamp.inode);
     if (auto done = put->run(); !done) return done;
     // A view of this path was of another state of the file, which is gone.
-    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ? AND state <> 'missing'");
+    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ?");
     if (!mark) return failure(mark);
     return mark->bind(std::string_view(refusal.path)).run();
+  });
+}
+
+Expected<void> Index::forget_refusal(const std::string& path) {
+  return writing([&](Connection& connection) -> Expected<void> {
+    auto forget = connection.query("DELETE FROM refusal WHERE path = ?");
+    if (!forget) return failure(forget);
+    return forget->bind(std::string_view(path)).run();
   });
 }
 

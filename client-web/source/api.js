@@ -138,7 +138,7 @@ function finished(job, { signal, onProgress }) {
 export function createApi() {
   /** @type {Map<string, Answer>} */
   const kept = new Map();
-  /** @type {Map<string, {promise: Promise<Answer>, controller: AbortController, waiting: number, listeners: Set<Function>, job: ?Job}>} */
+  /** Questions under way, by address, each with those who wait for it. */
   const running = new Map();
 
   function keep(path, answer) {
@@ -229,6 +229,9 @@ export function createApi() {
     campaigns: (options) => items('/v1/campaigns?limit=500', options),
     runs: (campaign, options) => items(address('/v1/runs', { campaign, limit: 500 }), options),
     views: (run, options) => items(address('/v1/views', { run, limit: 500 }), options),
+    /** The views with the greatest OPD_rms as indexed, greatest first. */
+    worstViews: async (campaign, limit, options) =>
+      (await json(address('/v1/views', { campaign, sort: '-opd_rms_mean_m', limit }), options)).body.items,
     run: async (id, options) => (await json(`/v1/runs/${segment(id)}`, options)).body,
     view: async (id, options) => (await json(`/v1/views/${segment(id)}`, options)).body,
     index: async (options) => (await json('/v1/index', options)).body,

@@ -14,7 +14,11 @@ export function emptyFace(title, ...advice) {
   );
 }
 
-/** Not possible: what the server said, about which parameter, and what it would accept. @param {import('./api.js').ApiError} error */
+/**
+ * Not possible: what the server said, about which parameter, and what it would accept.
+ *
+ * @param {import('./api.js').ApiError} error
+ */
 export function refusalFace(error) {
   const isCancelled = error.code === 'cancelled';
   return element(
@@ -40,9 +44,9 @@ export function refusalFace(error) {
   );
 }
 
-function sentence(text) {
-  // A parameter at the beginning, as in aperture=900%, keeps its spelling.
-  const capital = /^\w+=/.test(text) ? text : text.charAt(0).toUpperCase() + text.slice(1);
+/** With a capital and a full stop. What begins with a name, such as aperture=900%, keeps its spelling. */
+export function sentence(text) {
+  const capital = /^[a-z]+[ ,]/.test(text) ? text.charAt(0).toUpperCase() + text.slice(1) : text;
   return /[.!?]$/.test(capital) ? capital : `${capital}.`;
 }
 
@@ -55,7 +59,9 @@ export function lostFace(error, { seconds, hasOld, retry }) {
     element(
       'p',
       {},
-      `${sentence(error.message)} ${hasOld ? 'What stands below is the last answer. ' : ''}Trying again every ${seconds} s.`,
+      `${sentence(error.message)} `,
+      hasOld ? 'What stands below is the last answer. ' : '',
+      `Trying again every ${seconds} s.`,
     ),
     element('button', { type: 'button', on: { click: retry } }, 'Try now'),
   );
@@ -102,16 +108,32 @@ export function jobFace(cancel) {
   };
 }
 
-/** Warnings of a result, at its plot. @param {{code: string, text: string}[]} warnings */
+const shownAlike = 3;
+
+/**
+ * Warnings of a result, at its plot; of many with the same code the first few.
+ *
+ * @param {{code: string, text: string}[]} warnings
+ */
 export function warningItems(warnings) {
-  return warnings.map(({ code, text }) =>
-    element(
-      'li',
-      {},
-      element('span', { class: 'warning-mark', 'aria-hidden': 'true' }),
-      sentence(text),
-      ' ',
-      element('code', {}, code),
-    ),
-  );
+  const seen = new Map();
+  const items = [];
+  for (const { code, text } of warnings) {
+    seen.set(code, (seen.get(code) ?? 0) + 1);
+    if (seen.get(code) <= shownAlike) items.push(warningItem(sentence(text), code));
+  }
+  for (const [code, count] of seen) {
+    if (count > shownAlike) items.push(warningItem(`And ${count - shownAlike} more like these.`, code));
+  }
+  return items;
 }
+
+const warningItem = (text, code) =>
+  element(
+    'li',
+    {},
+    element('span', { class: 'warning-mark', 'aria-hidden': 'true' }),
+    text,
+    ' ',
+    element('code', {}, code),
+  );

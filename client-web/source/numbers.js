@@ -45,7 +45,7 @@ export function numberText(value, digits = 4) {
 export function statedText(value, digits = 6) {
   if (!Number.isFinite(value)) return 'no value';
   const text = numberText(value, digits);
-  return /×/.test(text) ? text.replace(/\.?0+(?=\u2009×)/, '') : text.includes('.') ? text.replace(/\.?0+$/, '') : text;
+  return text.includes('.') ? text.replace(/\.?0+(?=\u2009×|$)/, '') : text;
 }
 
 /** A share as a percentage: 0.95 as "95 %". */
@@ -72,7 +72,8 @@ export function decimalsFor(uncertainty) {
  */
 export function intervalText({ value, low = null, high = null }) {
   const needed = low === null || high === null ? null : decimalsFor((high - low) / 2);
-  const decimals = needed === null || value === 0 ? needed : Math.max(needed, 2 - Math.floor(Math.log10(Math.abs(value))));
+  const decimals =
+    needed === null || value === 0 ? needed : Math.max(needed, 2 - Math.floor(Math.log10(Math.abs(value))));
   const largest = Math.max(Math.abs(value), Math.abs(low ?? 0), Math.abs(high ?? 0));
   // Beyond the range of plain decimals powers of ten read better, and nothing lines up anyway.
   if (decimals === null || decimals > 6 || largest >= 1e6) {

@@ -42,7 +42,8 @@ for (const { name, options } of looks) {
       await settled(page);
       // One table of numbers is like another; all of them would only make the check slow.
       for (const button of await page.getByRole('button', { name: 'Numbers' }).all()) {
-        if (await button.evaluate((each) => each.closest('[data-name=field-of-regard], [data-name=histogram]'))) await button.click();
+        if (await button.evaluate((each) => each.closest('[data-name=field-of-regard], [data-name=histogram]')))
+          await button.click();
       }
       for (const details of await page.locator('.more > summary, .preparation:not([open]) > summary').all())
         await details.click();

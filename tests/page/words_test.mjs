@@ -52,7 +52,11 @@ test('a value has the decimals of its uncertainty', () => {
 });
 
 test('a wide interval leaves three figures of the value', () => {
-  assert.deepEqual(intervalText({ value: 0.21437, low: 0.0831, high: 0.3456 }), { value: '0.214', low: '0.083', high: '0.346' });
+  assert.deepEqual(intervalText({ value: 0.21437, low: 0.0831, high: 0.3456 }), {
+    value: '0.214',
+    low: '0.083',
+    high: '0.346',
+  });
 });
 
 test('what was stated is shown as it was stated', () => {

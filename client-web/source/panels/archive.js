@@ -1,11 +1,13 @@
 // Where one begins: campaigns and their runs, each run with a small picture of its field of regard.
 
+import { begin } from '../busy.js';
 import { element } from '../dom.js';
 import { emptyFace } from '../faces.js';
 import { countText, numberText, statedText } from '../numbers.js';
 import { fieldThumbnail } from '../plots/field_map.js';
 import { extent, tightLimits } from '../plots/scales.js';
 import { createQuestion } from '../question.js';
+import { quantityText } from '../units.js';
 import { changed, emptyState, formatState, withRun } from '../view_state.js';
 import { fieldModel, readingText } from './parts/field_model.js';
 import { raysPicture } from './parts/rays.js';
@@ -117,6 +119,15 @@ export function mount(root, { api }) {
 
   /** Small pictures come when they come; a run without one is no less a link. */
   async function addPictures(runs) {
+    const end = begin();
+    try {
+      await addPicturesOneByOne(runs);
+    } finally {
+      end();
+    }
+  }
+
+  async function addPicturesOneByOne(runs) {
     const models = new Map();
     for (const run of runs.slice(0, mostPictures)) {
       const path = `${api.runPath(run.id, 'field-of-regard')}?quantity=opd_rms_mean`;
@@ -145,7 +156,8 @@ export function mount(root, { api }) {
         range.textContent = `OPD_rms ${numberText(known[0], 3)} to ${readingText(known[1], null, null, model.unit)}`;
     }
     const [first] = models.values();
-    legend.textContent = `The maps show OPD_rms, mean over time, over azimuth and elevation, all on one scale: from ${numberText(whole[0], 3)} (dark) to ${readingText(whole[1], null, null, first.unit)} (light).`;
+    const scale = `from ${statedText(whole[0])} (dark) to ${quantityText(statedText(whole[1]), first.unit)} (light)`;
+    legend.textContent = `The maps show OPD_rms, mean over time, over azimuth and elevation, all on one scale: ${scale}.`;
   }
 
   function draw({ campaigns, runs, state }) {
@@ -173,7 +185,12 @@ export function mount(root, { api }) {
       return;
     }
     const views = campaigns.reduce((sum, campaign) => sum + (campaign.views ?? 0), 0);
-    lead.textContent = `${countText(campaigns.length, 'campaign')}, ${countText(runs.length, 'run')}, ${countText(views, 'viewing angle')}. Choose a run to see its field of regard.`;
+    const counts = [
+      countText(campaigns.length, 'campaign'),
+      countText(runs.length, 'run'),
+      countText(views, 'viewing angle'),
+    ];
+    lead.textContent = `${counts.join(', ')}. Choose a run to see its field of regard.`;
     list.replaceChildren(
       ...wanted.map((campaign) =>
         campaignSection(

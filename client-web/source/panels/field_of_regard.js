@@ -3,7 +3,7 @@
 import { address } from '../api.js';
 import { element } from '../dom.js';
 import { createFigure } from '../figure.js';
-import { emptyFace } from '../faces.js';
+import { emptyFace, sentence } from '../faces.js';
 import { limitControls } from '../limit_controls.js';
 import { countText } from '../numbers.js';
 import { fieldMap, fieldNodes } from '../plots/field_map.js';
@@ -22,7 +22,8 @@ function findingOf(model, result) {
   const text = ({ value, azimuth, elevation }) =>
     `${readingText(value, null, null, model.unit)} at ${azimuth}°, ${elevation}°`;
   const missing = result.arrays.value.data.length - known.length;
-  return `Least ${text(least)}; greatest ${text(greatest)} (azimuth, elevation).${missing ? ` ${countText(missing, 'view')} without a value.` : ''}`;
+  const gaps = missing ? ` ${countText(missing, 'view')} without a value.` : '';
+  return `Least ${text(least)}; greatest ${text(greatest)} (azimuth, elevation).${gaps}`;
 }
 
 function tableOf(result) {
@@ -72,6 +73,13 @@ export function mount(root, { api, go, place }) {
     model = fieldModel(answer.result, { state, checks });
     map.draw(model, state.view);
     limits.show(state.field_limits, [model.low, model.high]);
+    const known = model.views.filter(({ value }) => value !== null);
+    const [reason] = answer.result.warnings;
+    if (model.views.length > 0 && known.length === 0) {
+      figure.showFace(
+        emptyFace('No viewing angle has a value', reason ? sentence(reason.text) : 'The frames have none either.'),
+      );
+    }
     if (model.views.length === 0)
       figure.showFace(
         emptyFace(

@@ -84,7 +84,8 @@ export function mount(root, { api, go }) {
 
   function showPosition() {
     const time = block.times[position];
-    label.textContent = `frame ${wholeText(frameNumber())} of ${wholeText(view.frames)} · ${quantityText(steppedText(time, 0.2 / view.frame_rate_hz), 's')}`;
+    const instant = quantityText(steppedText(time, 0.2 / view.frame_rate_hz), 's');
+    label.textContent = `frame ${wholeText(frameNumber())} of ${wholeText(view.frames)} · ${instant}`;
     slider.value = String(frameNumber());
     slider.setAttribute('aria-valuetext', `frame ${frameNumber()}, ${numberText(time, 6)} seconds`);
     back.disabled = frameNumber() <= 0;

@@ -40,7 +40,8 @@ function progressOf(index) {
     element(
       'p',
       {},
-      `Indexing: ${wholeText(progress.files_done)} of ${countText(progress.files_total, 'file')}, ${bytesText(progress.bytes_done)} of ${bytesText(progress.bytes_total)}${rate}.`,
+      `Indexing: ${wholeText(progress.files_done)} of ${countText(progress.files_total, 'file')}, `,
+      `${bytesText(progress.bytes_done)} of ${bytesText(progress.bytes_total)}${rate}.`,
     ),
     element('progress', {
       max: 1,
@@ -114,7 +115,8 @@ export function mount(root, { api }) {
       element(
         'p',
         {},
-        `${countText(index.refusals ?? page.items.length, 'file')} could not be indexed; the rest of the archive is served. A mended file is read again at the next walk.`,
+        `${countText(index.refusals ?? page.items.length, 'file')} could not be indexed; the rest of the archive is served. `,
+        'A mended file is read again at the next walk.',
       ),
       element(
         'div',

@@ -7,6 +7,7 @@
 
 export const panels = Object.freeze([
   { name: 'archive', stages: ['archive'], place: 'main', width: 12 },
+  { name: 'worst_views', stages: ['archive'], place: 'main', width: 12 },
   { name: 'index_state', stages: ['index'], place: 'main', width: 12 },
   { name: 'subject', stages: ['run', 'view'], place: 'main', width: 12 },
   { name: 'findings', stages: ['view'], place: 'main', width: 12 },

@@ -2,6 +2,7 @@
 // field it is about.
 
 import { fromTemplate, part, element } from '../dom.js';
+import { sentence } from '../faces.js';
 import { statedText } from '../numbers.js';
 import { formatRemoval, parseRemoval, removalText } from '../removal.js';
 import { lengthUnits, quantityText, unitMeaning } from '../units.js';
@@ -44,7 +45,7 @@ export function mount(root, { go }) {
   isWide.addEventListener('change', openIfWide);
 
   let state = null;
-  let applied = 0; // when the form was last sent, so that only then a refusal takes the focus
+  let applied = -Infinity; // when the form was last sent, so that only then a refusal takes the focus
 
   /** Preparation as the form has it now. */
   function wanted() {
@@ -177,11 +178,7 @@ export function mount(root, { go }) {
       const name = fieldsOf[error.parameter] ?? error.parameter;
       const input = form.querySelector(`[name="${name}"]`);
       const accepted = error.accepted.length ? ` Accepted: ${error.accepted.join(', ')}.` : '';
-      const note = element(
-        'p',
-        { class: 'field-error', id: 'preparation-error' },
-        `${error.message}.${accepted}`.replace('..', '.'),
-      );
+      const note = element('p', { class: 'field-error', id: 'preparation-error' }, sentence(error.message) + accepted);
       input.closest('.field').append(note);
       input.setAttribute('aria-invalid', 'true');
       input.setAttribute('aria-describedby', note.id);

@@ -133,7 +133,8 @@ export function mount(root, { api, go }) {
     const at = `t = ${quantityText(steppedText(time.data[index], 0.2 / view.frame_rate_hz), time.unit)}`;
     if (mean.data[index] === null) return `${at}: no value`;
     if (low.data[index] === high.data[index]) return `${at}: ${quantityText(numberText(mean.data[index]), unit)}`;
-    return `${at}: mean ${quantityText(numberText(mean.data[index]), unit)}, ${numberText(low.data[index])} to ${numberText(high.data[index])}`;
+    const span = `${numberText(low.data[index])} to ${numberText(high.data[index])}`;
+    return `${at}: mean ${quantityText(numberText(mean.data[index]), unit)}, ${span}`;
   }
 
   function draw(answer) {
@@ -193,9 +194,11 @@ export function mount(root, { api, go }) {
 
   function findingOf(perColumn, time, frames) {
     const [start, end] = [time.data[0], time.data.at(-1)];
-    const span = `${steppedText(start, (end - start) / 200)} to ${quantityText(steppedText(end, (end - start) / 200), time.unit)}`;
+    const step = (end - start) / 200; // finer than a reader can tell apart on the axis
+    const span = `${steppedText(start, step)} to ${quantityText(steppedText(end, step), time.unit)}`;
     if (perColumn <= 1) return `${wholeText(frames)} frames, every one drawn, ${span}.`;
-    return `${wholeText(frames)} frames, about ${numberText(perColumn, 3)} to a column, ${span}. The band reaches from the least to the greatest.`;
+    const columns = `about ${numberText(perColumn, 3)} to a column`;
+    return `${wholeText(frames)} frames, ${columns}, ${span}. The band reaches from the least to the greatest.`;
   }
 
   function fillQuantities() {

@@ -126,6 +126,8 @@ function distribution() {
     onCursor: (bin) => figure.read(bin === null ? null : readingAt(bin)),
   });
 
+  figure.setHint('Point at a bar to read it.');
+
   function readingAt(bin) {
     const {
       histogram_low: low,
@@ -157,7 +159,7 @@ function distribution() {
       const distance = values.lognormal_ks_distance?.value;
       figure.setFinding(
         fit && Number.isFinite(distance)
-          ? `Bars are frames, the dashed line a log-normal fit; they are at most ${percentText(distance, 2)} apart (Kolmogorov–Smirnov).`
+          ? `Bars are frames, the dashed line a log-normal fit: at most ${percentText(distance, 2)} apart (Kolmogorov–Smirnov).`
           : 'Bars are frames.',
       );
       figure.setWarnings(warnings.filter(({ code }) => /lognormal|histogram|distribution/.test(code)));
@@ -188,9 +190,9 @@ function distribution() {
   };
 }
 
-/** Range of the mean and of its interval once a quarter of the record is in: the first few frames would dwarf the rest. */
+/** Range of the mean and of its interval once half of the record is in: the first few frames would dwarf the rest. */
 function settledRange(mean, low, high) {
-  const later = (values) => (values ?? []).slice(Math.floor(mean.length / 4));
+  const later = (values) => (values ?? []).slice(Math.floor(mean.length / 2));
   return paddedRange(extent([...mean, ...later(low), ...later(high)]) ?? [0, 1]);
 }
 
@@ -203,6 +205,8 @@ function convergence() {
     onCursor: (index) => figure.read(index === null ? null : readingAt(index)),
   });
 
+  figure.setHint('Point at the curve to read it.');
+
   function readingAt(index) {
     const {
       convergence_frames: frames,
@@ -211,7 +215,8 @@ function convergence() {
       convergence_high: high,
     } = latest.result.arrays;
     const text = intervalText({ value: mean.data[index], low: low.data[index], high: high.data[index] });
-    return `after ${wholeText(frames.data[index])} frames: ${quantityText(text.value, mean.unit)}${text.low === null ? '' : ` (${text.low} to ${text.high})`}`;
+    const interval = text.low === null ? '' : ` (${text.low} to ${text.high})`;
+    return `after ${wholeText(frames.data[index])} frames: ${quantityText(text.value, mean.unit)}${interval}`;
   }
 
   return {
@@ -240,7 +245,8 @@ function convergence() {
       const last = frames.data.length - 1;
       const change = Math.abs(mean.data[last] - mean.data[Math.floor(last / 2)]) / Math.abs(mean.data[last]);
       figure.setFinding(
-        `The mean over the frames so far${level ? `, with its ${percentText(level)} interval` : ''}; it moved by ${percentText(change, 2)} over the second half.`,
+        `The mean over the frames so far${level ? `, with its ${percentText(level)} interval` : ''}. ` +
+          `It moved by ${percentText(change, 2)} over the second half.`,
       );
       figure.setWarnings(
         answer.result.warnings.filter(({ code }) => /converge|stationar|effective|interval/.test(code)),
@@ -375,7 +381,7 @@ export function mount(root, { api, go }) {
   const each = (act) => parts.forEach(({ figure }) => act(figure));
   const question = createQuestion(api, {
     showFace(face) {
-      faceHost.replaceChildren(...(face ? [face] : []));
+      faceHost.replaceChildren(...(face ? [element('h2', {}, 'Statistics'), face] : []));
       if (!face) each((figure) => figure.showFace(null));
     },
     setStale: (isStale) => each((figure) => figure.setStale(isStale)),

@@ -101,8 +101,20 @@ function surroundings(model, layout, palette, id) {
   const { box, xs, ys } = layout;
   const outside = model.views.map(({ value }) => value).filter((value) => value !== null);
   return [
-    leftAxis(box, ys, ticksFor(ys.domain, box.bottom - box.top, roomFor(box.bottom - box.top)), 'elevation (°)', palette),
-    bottomAxis(box, xs, ticksFor(xs.domain, box.right - box.left, box.right - box.left < 300 ? 42 : 72), 'azimuth (°)', palette),
+    leftAxis(
+      box,
+      ys,
+      ticksFor(ys.domain, box.bottom - box.top, roomFor(box.bottom - box.top)),
+      'elevation (°)',
+      palette,
+    ),
+    bottomAxis(
+      box,
+      xs,
+      ticksFor(xs.domain, box.right - box.left, box.right - box.left < 300 ? 42 : 72),
+      'azimuth (°)',
+      palette,
+    ),
     colourBar(
       { x: box.right + 14, top: box.top, bottom: box.bottom },
       {

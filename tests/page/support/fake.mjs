@@ -90,7 +90,12 @@ const result = (analysis, subject, values, arrays, more = {}) => ({
   values,
   arrays,
   warnings: more.warnings ?? [],
-  provenance: { digest: 'f'.repeat(32), preparation: { first: 0, last: frames - 1 }, frames: { count: frames }, ...more.provenance },
+  provenance: {
+    digest: 'f'.repeat(32),
+    preparation: { first: 0, last: frames - 1 },
+    frames: { count: frames },
+    ...more.provenance,
+  },
 });
 
 function statistics(view) {
@@ -117,7 +122,6 @@ function statistics(view) {
       lognormal_median: { value: mean, unit: 'um' },
       lognormal_sigma: { value: 0.22, unit: '1' },
       lognormal_ks_distance: { value: 0.018, unit: '1' },
-     
     },
     {
       x: array(axis, 'm', ['x']),

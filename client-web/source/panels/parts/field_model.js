@@ -1,9 +1,9 @@
 // From a field-of-regard result to what the map draws.
 
-import { intervalText } from '../../numbers.js';
+import { countText, intervalText } from '../../numbers.js';
 import { sequential } from '../../plots/colour_maps.js';
 import { tightLimits } from '../../plots/scales.js';
-import { angleText, labelOf } from '../../quantities.js';
+import { angleText } from '../../quantities.js';
 import { quantityText, unitText } from '../../units.js';
 import { formatState, withView } from '../../view_state.js';
 
@@ -34,7 +34,7 @@ export function fieldModel(result, { state, checks }) {
         azimuth: azimuth.data[i],
         elevation: elevation.data[i],
         value: value.data[i],
-        text: `${place}: ${reading}${flaws.length ? `; ${flaws.length === 1 ? 'a check' : `${flaws.length} checks`} to look at` : ''}`,
+        text: `${place}: ${reading}${flaws.length ? `; ${countText(flaws.length, 'check')} to look at` : ''}`,
         // The same digits as in the name, so that who says what they see is understood.
         short:
           value.data[i] === null
@@ -46,5 +46,5 @@ export function fieldModel(result, { state, checks }) {
     })
     .filter((view) => view.azimuth !== null && view.elevation !== null);
   const [least, greatest] = state.field_limits ?? tightLimits(value.data);
-  return { views, map: sequential, low: least, high: greatest, barTitle: unitText(unit) || labelOf(state.field), unit };
+  return { views, map: sequential, low: least, high: greatest, barTitle: unitText(unit), unit };
 }

@@ -17,6 +17,11 @@ namespace bentlight::archive {
 
 namespace {
 
+bool is_fault_of_the_installation(int exit_code) {
+  return exit_code == probe_exit::no_file || exit_code == probe_exit::no_library ||
+         exit_code == probe_exit::no_cage || exit_code == probe_exit::not_started;
+}
+
 /// Why a child that should have answered did not.
 Expected<void> judged(const ChildEnd& end) {
   const auto seconds = limits::probe_seconds.count();
@@ -31,9 +36,13 @@ Expected<void> judged(const ChildEnd& end) {
   if (end.signal != 0) {
     return failure(ErrorCode::damaged_file, fmt::format("the parser died by signal {}", end.signal));
   }
-  if (end.exit_code != 0) {
+  if (is_fault_of_the_installation(end.exit_code)) {
     return failure(ErrorCode::io_error,
                    fmt::format("the probe could not do its work (exit code {})", end.exit_code));
+  }
+  if (end.exit_code != 0) {
+    return failure(ErrorCode::damaged_file,
+                   fmt::format("the parser broke off (exit code {})", end.exit_code));
   }
   return {};
 }

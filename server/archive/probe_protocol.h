@@ -21,6 +21,15 @@ namespace bentlight::archive {
 inline constexpr int probe_output_descriptor = 1;
 inline constexpr int probe_file_descriptor = 3;
 
+/// Exit codes by which the probe says that the installation is at fault, not the file. With any other but 0
+/// the file has brought the parser down.
+namespace probe_exit {
+inline constexpr int no_file = 40;
+inline constexpr int no_library = 41;
+inline constexpr int no_cage = 42;
+inline constexpr int not_started = 127;  // posix_spawn's
+}  // namespace probe_exit
+
 std::vector<std::byte> error_reply(const Error& error);
 std::vector<std::byte> tree_reply(const nlohmann::json& tree);
 std::vector<std::byte> structure_reply(const WavefrontFile& file);

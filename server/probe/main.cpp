@@ -78,15 +78,15 @@ int main(int argument_count, char** arguments) {
   if (argument_count < 2 || ::fstat(archive::probe_file_descriptor, &status) != 0) {
     std::fputs("bentlight-probe is started by bentlight, with an open file; it has no use of its own\n",
                stderr);
-    return 2;
+    return archive::probe_exit::no_file;
   }
   // The library sets itself up before the cage closes; it meets the file only after.
-  if (H5open() < 0 || H5PLset_loading_state(0) < 0) return 3;
+  if (H5open() < 0 || H5PLset_loading_state(0) < 0) return archive::probe_exit::no_library;
   H5Eset_auto2(H5E_DEFAULT, nullptr, nullptr);
   probe::FdFile source(archive::probe_file_descriptor, static_cast<std::uint64_t>(status.st_size));
-  if (!probe::enter_cage()) return 4;
+  if (!probe::enter_cage()) return archive::probe_exit::no_cage;
   const bool is_said =
       write_all(reply_to(source, {arguments + 1, static_cast<std::size_t>(argument_count - 1)}));
   // Without the library's tidying up, which would walk over what a hostile file has left behind.
-  ::_exit(is_said ? 0 : 5);
+  ::_exit(is_said ? 0 : 1);
 }

@@ -119,7 +119,8 @@ TEST_F(Child, InTheProbesPlaceCannotPassOffNonsense) {
   EXPECT_EQ(answer(R"(printf '\002\000\000\000\000\000\000\000{}')").code, ErrorCode::damaged_file);
   EXPECT_EQ(answer(R"(printf '\002\000\000\000\000\000\000\000[]')").code, ErrorCode::damaged_file);
   EXPECT_EQ(answer(R"(printf '\377\377\377\377\377\377\377\377{}')").code, ErrorCode::damaged_file);
-  EXPECT_EQ(answer("exit 4").code, ErrorCode::io_error);
+  EXPECT_EQ(answer("exit 1").code, ErrorCode::damaged_file);
+  EXPECT_EQ(answer("exit 42").code, ErrorCode::io_error);  // what the probe says when it gets no cage
   EXPECT_EQ(answer("echo more >> '" + (folder_.path() / "given").string() + "'; kill -SEGV $$").code,
             ErrorCode::file_changed);
 }

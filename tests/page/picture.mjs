@@ -19,7 +19,7 @@ try {
       ({ azimuth_deg: azimuth, elevation_deg: elevation, checks }) =>
         azimuth > 115 && elevation > 30 && checks.length === 0,
     ) ?? views[0];
-  const { page } = await openPage(browser, { viewport: { width: 1360, height: 1340 }, colorScheme: 'light' });
+  const { page } = await openPage(browser, { viewport: { width: 1440, height: 1330 }, colorScheme: 'light' });
   await page.goto(`${site.url}/?run=${run.id}&view=${view.id}&frame=700`);
   await settled(page);
   await page.screenshot({ path: picture });

@@ -16,6 +16,31 @@ double windowed_sum(double keep, double turn_rad, double frames) {
       .real();
 }
 
+/// The same for the correlation of a slow series.
+double windowed_sum(const SlowSeries& slow, double turn_rad, double frames) {
+  return slow.long_part * windowed_sum(slow.a, turn_rad, frames) +
+         slow.short_part * windowed_sum(slow.b, turn_rad, frames);
+}
+
+/// The same for its square.
+double windowed_sum_of_square(const SlowSeries& slow, double turn_rad, double frames) {
+  return slow.long_part * slow.long_part * windowed_sum(slow.a * slow.a, turn_rad, frames) +
+         2.0 * slow.long_part * slow.short_part * windowed_sum(slow.a * slow.b, turn_rad, frames) +
+         slow.short_part * slow.short_part * windowed_sum(slow.b * slow.b, turn_rad, frames);
+}
+
+/// The same for a correlation [lags] that has died away at its end.
+double windowed_sum(const std::vector<double>& correlation, double turn_rad, double frames) {
+  std::complex<double> turned = 1.0;
+  const std::complex<double> turn = std::polar(1.0, turn_rad);
+  double sum = correlation[0];
+  for (std::size_t lag = 1; lag < correlation.size() && static_cast<double>(lag) < frames; ++lag) {
+    turned *= turn;
+    sum += 2.0 * (1.0 - static_cast<double>(lag) / frames) * correlation[lag] * turned.real();
+  }
+  return sum;
+}
+
 struct PlaneFit {
   double points = 0.0;
   double spread_m2 = 0.0;  // mean of x^2, and of y^2: the grid is symmetric
@@ -61,7 +86,10 @@ std::vector<double> inside_of_row(const DemoGrid& grid, std::size_t row) {
 }  // namespace
 
 ExpectedStatistics::ExpectedStatistics(const Scenario& scenario, const DemoGrid& grid)
-    : scenario_(scenario), grid_(grid), pairs_(ShapeOrder(scenario).pairs) {
+    : scenario_(scenario),
+      grid_(grid),
+      pairs_(ShapeOrder(scenario).pairs),
+      slow_(scenario.random.forgetting, scenario.frame_step_s()) {
   const auto waves = pair_waves(scenario);
   const PlaneFit fit = plane_fit(grid);
   residual_ = Eigen::MatrixXd::Zero(2 * pairs_, 2 * pairs_);
@@ -80,14 +108,27 @@ ExpectedStatistics::ExpectedStatistics(const Scenario& scenario, const DemoGrid&
   residual_ -=
       mean * mean.transpose() + fit.spread_m2 * (tip_ * tip_.transpose() + tilt_ * tilt_.transpose());
 
-  const double step = scenario.frame_step_s();
-  const RollUp& roll_up = scenario.roll_up;
   for (const Wave& wave : waves) {
-    turn_rad_.push_back(wave.kx_rad_m * scenario.random.convective_speed_m_s * step);
-    keep_.push_back(std::exp(-step / scenario.random.decorrelation_time_s));
+    turn_rad_.push_back(wave.kx_rad_m * scenario.random.convective_speed_m_s * scenario.frame_step_s());
   }
-  keep_.back() = std::exp(-step / roll_up.phase_memory_s -
-                          roll_up.modulation * roll_up.modulation * step / roll_up.modulation_memory_s);
+  fill_roll_up_correlation();
+}
+
+/// Of the roll-up's phasor m exp(-i psi): E m m' = exp(s^2 (r - 1)), and a phase of variance V loses exp(-V /
+/// 2); of m^2, whose logarithm is normal too: exp(4 s^2 r) - 1.
+void ExpectedStatistics::fill_roll_up_correlation() {
+  const RollUp& law = scenario_.roll_up;
+  const double step = scenario_.frame_step_s(), square = law.modulation * law.modulation;
+  const double wander = 2.0 * std::numbers::pi * law.wander_hz, memory = law.wander_memory_s;
+  const SlowSeries slow(law.modulation_forgetting, step);
+  double left = 1.0;
+  for (std::size_t lag = 0; left > 1e-9; ++lag) {
+    const double t = static_cast<double>(lag) * step, r = slow.correlation(static_cast<double>(lag));
+    const double phase_variance = 2.0 * wander * wander * memory * (t + memory * std::expm1(-t / memory));
+    roll_up_.push_back(std::exp(square * (r - 1.0) - 0.5 * phase_variance));
+    modulation_.push_back(std::expm1(4.0 * square * r));
+    left = std::max(roll_up_.back(), modulation_.back());
+  }
 }
 
 /// The variance of the real part of each pair's weight (that of the imaginary part is the same).
@@ -113,41 +154,66 @@ Amplitudes ExpectedStatistics::amplitudes(const View& view) const {
   return amplitudes;
 }
 
-/// The variance of a record's mean of q, the roll-up's own term left out.
-///
-///   source   a block of G splits into a part that turns with the difference of two frequencies and one that
-///   turns
-///            with their sum
-double ExpectedStatistics::gaussian_variance(const std::vector<double>& variance, double frames) const {
+/// A block of G splits into a part that turns with the difference of two frequencies and one that turns with
+/// their sum: tr(G_kl R(w_l t) G_kl' R(w_k t)') = 2 differing cos((w_k - w_l) t) + 2 adding cos((w_k + w_l)
+/// t).
+struct ExpectedStatistics::Turning {
+  double differing, adding;
+};
+
+ExpectedStatistics::Turning ExpectedStatistics::turning(Eigen::Index k, Eigen::Index l) const {
+  const double cc = residual_(k, l), ss = residual_(pairs_ + k, pairs_ + l);
+  const double cs = residual_(k, pairs_ + l), sc = residual_(pairs_ + k, l);
+  return {.differing = 0.25 * ((cc + ss) * (cc + ss) + (sc - cs) * (sc - cs)),
+          .adding = 0.25 * ((cc - ss) * (cc - ss) + (sc + cs) * (sc + cs))};
+}
+
+/// What the waves, with themselves and each other, add to the variance of a record's mean of q.
+double ExpectedStatistics::waves_variance(const std::vector<double>& variance, double frames) const {
   double sum = 0.0;
-  for (Eigen::Index k = 0; k < pairs_; ++k) {
+  for (Eigen::Index k = 0; k + 1 < pairs_; ++k) {
     for (Eigen::Index l = 0; l <= k; ++l) {
-      if (k == pairs_ - 1 && l == k) continue;
-      const double cc = residual_(k, l), ss = residual_(pairs_ + k, pairs_ + l);
-      const double cs = residual_(k, pairs_ + l), sc = residual_(pairs_ + k, l);
-      const double differing = 0.25 * ((cc + ss) * (cc + ss) + (sc - cs) * (sc - cs));
-      const double adding = 0.25 * ((cc - ss) * (cc - ss) + (sc + cs) * (sc + cs));
       const auto i = static_cast<std::size_t>(k), j = static_cast<std::size_t>(l);
-      const double keep = keep_[i] * keep_[j];
-      const double both = differing * windowed_sum(keep, turn_rad_[i] - turn_rad_[j], frames) +
-                          adding * windowed_sum(keep, turn_rad_[i] + turn_rad_[j], frames);
-      sum += (k == l ? 1.0 : 2.0) * variance[i] * variance[j] * 2.0 * both;
+      const Turning both = turning(k, l);
+      const double lags =
+          both.differing * windowed_sum_of_square(slow_, turn_rad_[i] - turn_rad_[j], frames) +
+          both.adding * windowed_sum_of_square(slow_, turn_rad_[i] + turn_rad_[j], frames);
+      sum += (k == l ? 1.0 : 2.0) * variance[i] * variance[j] * 2.0 * lags;
     }
   }
   return 2.0 * sum / frames;
 }
 
-/// The roll-up's own term: its mean square follows m^2, whose covariance is exp(4 s^2 r) - 1. What turns with
-/// twice its frequency averages out.
-double ExpectedStatistics::modulation_variance(double roll_up_energy, double frames) const {
-  const RollUp& law = scenario_.roll_up;
-  const double keep = std::exp(-scenario_.frame_step_s() / law.modulation_memory_s);
-  const double spread = 4.0 * law.modulation * law.modulation;
-  double sum = std::expm1(spread), correlation = keep;
-  for (double lag = 1.0; lag < frames && correlation > 1e-9; lag += 1.0, correlation *= keep) {
-    sum += 2.0 * (1.0 - lag / frames) * std::expm1(spread * correlation);
+/// What the waves add together with the roll-up.
+double ExpectedStatistics::crossed_variance(const std::vector<double>& variance, double frames) const {
+  std::vector<double> product = roll_up_;
+  for (std::size_t lag = 0; lag < product.size(); ++lag) {
+    product[lag] *= slow_.correlation(static_cast<double>(lag));
   }
-  return roll_up_energy * roll_up_energy * sum / frames;
+  double sum = 0.0;
+  for (Eigen::Index k = 0; k + 1 < pairs_; ++k) {
+    const auto i = static_cast<std::size_t>(k);
+    const Turning both = turning(pairs_ - 1, k);
+    const double lags = both.differing * windowed_sum(product, turn_rad_.back() - turn_rad_[i], frames) +
+                        both.adding * windowed_sum(product, turn_rad_.back() + turn_rad_[i], frames);
+    sum += 2.0 * variance[i] * variance.back() * 2.0 * lags;
+  }
+  return 2.0 * sum / frames;
+}
+
+/// The roll-up's own term: its mean square follows m^2. What turns with twice its frequency averages out.
+double ExpectedStatistics::modulation_variance(double roll_up_energy, double frames) const {
+  return roll_up_energy * roll_up_energy * windowed_sum(modulation_, 0.0, frames) / frames;
+}
+
+/// What the record's own mean map takes along.
+double ExpectedStatistics::mean_map_energy(const std::vector<double>& variance, double frames) const {
+  double sum = variance.back() * pair_energy(pairs_ - 1) * windowed_sum(roll_up_, turn_rad_.back(), frames);
+  for (Eigen::Index k = 0; k + 1 < pairs_; ++k) {
+    const auto i = static_cast<std::size_t>(k);
+    sum += variance[i] * pair_energy(k) * windowed_sum(slow_, turn_rad_[i], frames);
+  }
+  return sum / frames;
 }
 
 double ExpectedStatistics::slope_variance(const Eigen::VectorXd& slopes,
@@ -190,13 +256,9 @@ Expectation ExpectedStatistics::of(const View& view, std::size_t frames) const {
   expectation.noise_rms_m = tunnel ? effects.sensor_noise_m : 0.0;
   const double noise = expectation.noise_rms_m * expectation.noise_rms_m * (1.0 - 3.0 / points);
 
-  double mean_map = noise / count;  // what the record's own mean takes along
-  for (Eigen::Index k = 0; k < pairs_; ++k) {
-    const auto i = static_cast<std::size_t>(k);
-    mean_map += variance[i] * pair_energy(k) * windowed_sum(keep_[i], turn_rad_[i], count) / count;
-  }
+  const double mean_map = noise / count + mean_map_energy(variance, count);
   const double total = view.flow_rms_m * view.flow_rms_m + noise;
-  const double spread = gaussian_variance(variance, count) +
+  const double spread = waves_variance(variance, count) + crossed_variance(variance, count) +
                         modulation_variance(variance.back() * pair_energy(pairs_ - 1), count) +
                         2.0 * noise * noise / (points * count);
   expectation.opd_rms_m = std::sqrt(total - mean_map);

@@ -8,6 +8,7 @@
 #include "demo/histories.h"
 #include "demo/scenario.h"
 #include "demo/shapes.h"
+#include "demo/slow_series.h"
 
 namespace bentlight::demo {
 
@@ -28,10 +29,10 @@ struct Expectation {
 ///   projecting
 ///            out piston and tilt. With G the shapes' Gram matrix after that projection, divided by the
 ///            number of points, and Z(tau) the weights' covariance: E q = tr(G Z(0)), and by Isserlis'
-///            theorem cov(q(t), q(t + tau)) = 2 tr(G Z(tau) G Z(tau)'). Z consists of 2 x 2 blocks s^2 r^tau
-///            R(omega tau), so sums over tau are geometric. The roll-up is not Gaussian; its own term uses
-///            the moments of its log-normal modulation, its terms with the waves a single exponential of the
-///            same slope at 0.
+///            theorem cov(q(t), q(t + tau)) = 2 tr(G Z(tau) G Z(tau)'). Z consists of 2 x 2 blocks s^2 r(tau)
+///            R(omega tau) with r(tau) from SlowSeries, so sums over tau are geometric. The roll-up is not
+///            Gaussian: its own term uses the moments of its log-normal modulation, its terms with the waves
+///            its correlation, both summed lag by lag.
 class ExpectedStatistics {
  public:
   ExpectedStatistics(const Scenario& scenario, const DemoGrid& grid);
@@ -42,21 +43,28 @@ class ExpectedStatistics {
   Expectation of(const View& view, std::size_t frames) const;
 
  private:
+  struct Turning;  // what two pairs share of the Gram matrix
+  Turning turning(Eigen::Index k, Eigen::Index l) const;
   double pair_energy(Eigen::Index pair) const {
     return residual_(pair, pair) + residual_(pairs_ + pair, pairs_ + pair);
   }
-  double gaussian_variance(const std::vector<double>& variance, double frames) const;
+  void fill_roll_up_correlation();
+  double waves_variance(const std::vector<double>& variance, double frames) const;
+  double crossed_variance(const std::vector<double>& variance, double frames) const;
   double modulation_variance(double roll_up_energy, double frames) const;
+  double mean_map_energy(const std::vector<double>& variance, double frames) const;
   double slope_variance(const Eigen::VectorXd& slopes, const std::vector<double>& variance) const;
   std::vector<double> pair_variances(const View& view) const;
 
   const Scenario& scenario_;
   const DemoGrid& grid_;
   Eigen::Index pairs_;
-  Eigen::MatrixXd residual_;      // Gram matrix of the pairs' shapes, cosines first
-  Eigen::VectorXd tip_, tilt_;    // their slopes along x and y, 1/m
-  std::vector<double> turn_rad_;  // per frame and pair
-  std::vector<double> keep_;      // correlation left after a frame
+  Eigen::MatrixXd residual_;        // Gram matrix of the pairs' shapes, cosines first
+  Eigen::VectorXd tip_, tilt_;      // their slopes along x and y, 1/m
+  std::vector<double> turn_rad_;    // per frame and pair
+  SlowSeries slow_;                 // of the waves
+  std::vector<double> roll_up_;     // correlation of the roll-up's phasor lag by lag, its turning left out
+  std::vector<double> modulation_;  // covariance of m^2 lag by lag
 };
 
 }  // namespace bentlight::demo

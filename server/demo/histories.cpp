@@ -34,6 +34,20 @@ std::vector<float> wandering_series(std::vector<float> normals, double memory) {
   return normals;
 }
 
+/// The same with the memory of SlowSeries. The first number of the series begins both filters in equilibrium.
+std::vector<float> slowly_wandering_series(std::vector<float> normals, const SlowSeries& slow) {
+  double x = slow.start_x * static_cast<double>(normals[0]);
+  double y =
+      slow.start_follow * static_cast<double>(normals[0]) + slow.start_own * static_cast<double>(normals[1]);
+  for (float& value : normals) {
+    const double kick = slow.renewal * static_cast<double>(value);
+    value = static_cast<float>(y);
+    x = slow.b * x + kick;
+    y = slow.a * y + x;
+  }
+  return normals;
+}
+
 }  // namespace
 
 Histories::Histories(const Scenario& scenario,
@@ -45,40 +59,47 @@ Histories::Histories(const Scenario& scenario,
       order_(scenario),
       tunnel_(view.run == Run::tunnel),
       roll_up_rms_m_(amplitudes.roll_up_m / std::numbers::sqrt2),
-      wave_numbers_(scenario.options.seed, view.stream + waves) {
+      wave_numbers_(scenario.options.seed, view.stream + waves),
+      slow_(scenario.random.forgetting, scenario.frame_step_s()) {
   make_roll_up(scenario.roll_up, amplitudes.roll_up_m, instants + scenario.signals.pressure_lead_frames);
   if (tunnel_) make_tracker(scenario.tunnel, instants);
   pressure_noise_ = normal_series(scenario, view, pressure, instants);
   acceleration_noise_ = normal_series(scenario, view, acceleration, instants);
+  start_waves(amplitudes);
+}
 
-  const std::size_t count = scenario.waves.size();
-  const double step = scenario.frame_step_s(), keep = std::exp(-step / scenario.random.decorrelation_time_s);
-  normals_.resize(2 * count);
-  wave_numbers_.fill(0, normals_);
+void Histories::start_waves(const Amplitudes& amplitudes) {
+  const std::size_t count = scenario_.waves.size();
+  std::vector<float> normals(4 * count);
+  wave_numbers_.fill(0, normals);
+  const auto normal = [&](std::size_t quarter, std::size_t k) {
+    return std::complex<double>(static_cast<double>(normals[quarter * count + k]),
+                                static_cast<double>(normals[(quarter + 1) * count + k]));
+  };
   for (std::size_t k = 0; k < count; ++k) {
-    const double angle = -scenario.waves[k].kx_rad_m * scenario.random.convective_speed_m_s * step;
-    turn_real_.push_back(keep * std::cos(angle));
-    turn_imaginary_.push_back(keep * std::sin(angle));
-    renewal_m_.push_back(amplitudes.wave_m[k] * std::sqrt(1.0 - keep * keep));
-    real_.push_back(amplitudes.wave_m[k] * static_cast<double>(normals_[k]));
-    imaginary_.push_back(amplitudes.wave_m[k] * static_cast<double>(normals_[count + k]));
+    const double angle =
+        -scenario_.waves[k].kx_rad_m * scenario_.random.convective_speed_m_s * scenario_.frame_step_s();
+    turn_.push_back(std::polar(1.0, angle));
+    driving_.push_back(slow_.start_x * normal(0, k));
+    wave_.push_back(slow_.start_follow * normal(0, k) + slow_.start_own * normal(2, k));
   }
+  wave_m_ = amplitudes.wave_m;
+  normals_.resize(2 * count);
 }
 
 void Histories::make_roll_up(const RollUp& law, double amplitude_m, std::size_t instants) {
   const double step = scenario_.frame_step_s(), s = law.modulation;
-  const auto slow =
-      wandering_series(normal_series(scenario_, view_, modulation, instants), law.modulation_memory_s / step);
-  const auto kicks = normal_series(scenario_, view_, phase, instants);
-  // A Wiener phase of variance 2 t / memory leaves exp(-t / memory) of the correlation.
-  const double kick = std::sqrt(2.0 * step / law.phase_memory_s);
+  const auto slow = slowly_wandering_series(normal_series(scenario_, view_, modulation, instants),
+                                            SlowSeries(law.modulation_forgetting, step));
+  const auto wander =
+      wandering_series(normal_series(scenario_, view_, phase, instants), law.wander_memory_s / step);
   double angle = -two_pi * uniform_number(scenario_.options.seed, view_.stream + phases, 0);
   roll_up_m_.reserve(instants);
   for (std::size_t i = 0; i < instants; ++i) {
     const double size = amplitude_m * std::exp(s * static_cast<double>(slow[i]) - s * s);
     roll_up_m_.emplace_back(std::polar(size, angle));
-    angle = std::remainder(angle - two_pi * law.frequency_hz * step - kick * static_cast<double>(kicks[i]),
-                           two_pi);
+    const double frequency = law.frequency_hz + law.wander_hz * static_cast<double>(wander[i]);
+    angle = std::remainder(angle - two_pi * frequency * step, two_pi);
   }
 }
 
@@ -100,13 +121,13 @@ void Histories::make_tracker(const TunnelEffects& law, std::size_t instants) {
 }
 
 void Histories::advance_waves() {
-  const std::size_t count = real_.size();
+  const std::size_t count = wave_.size();
   wave_numbers_.fill(++wave_instant_, normals_);
   for (std::size_t k = 0; k < count; ++k) {
-    const double real = turn_real_[k] * real_[k] - turn_imaginary_[k] * imaginary_[k];
-    const double imaginary = turn_imaginary_[k] * real_[k] + turn_real_[k] * imaginary_[k];
-    real_[k] = real + renewal_m_[k] * static_cast<double>(normals_[k]);
-    imaginary_[k] = imaginary + renewal_m_[k] * static_cast<double>(normals_[count + k]);
+    const std::complex<double> normal(static_cast<double>(normals_[k]),
+                                      static_cast<double>(normals_[count + k]));
+    driving_[k] = slow_.b * turn_[k] * driving_[k] + slow_.renewal * normal;
+    wave_[k] = slow_.a * turn_[k] * wave_[k] + driving_[k];
   }
 }
 
@@ -114,10 +135,11 @@ void Histories::weights_at(std::size_t instant, float* weights) {
   if (instant < wave_instant_) throw std::invalid_argument("Histories: instants must not fall");
   while (wave_instant_ < instant) advance_waves();
   // Re(z exp(i k x)) = Re z cos(k x) - Im z sin(k x)
-  const auto count = static_cast<Eigen::Index>(real_.size());
+  const auto count = static_cast<Eigen::Index>(wave_.size());
   for (Eigen::Index k = 0; k < count; ++k) {
-    weights[order_.cosine(k)] = static_cast<float>(real_[static_cast<std::size_t>(k)]);
-    weights[order_.sine(k)] = static_cast<float>(-imaginary_[static_cast<std::size_t>(k)]);
+    const auto i = static_cast<std::size_t>(k);
+    weights[order_.cosine(k)] = static_cast<float>(wave_m_[i] * wave_[i].real());
+    weights[order_.sine(k)] = static_cast<float>(-wave_m_[i] * wave_[i].imag());
   }
   weights[order_.cosine(count)] = roll_up_m_[instant].real();
   weights[order_.sine(count)] = -roll_up_m_[instant].imag();

@@ -9,6 +9,7 @@
 #include "demo/normal_numbers.h"
 #include "demo/scenario.h"
 #include "demo/shapes.h"
+#include "demo/slow_series.h"
 
 namespace bentlight::demo {
 
@@ -39,6 +40,7 @@ class Histories {
  private:
   void make_roll_up(const RollUp& law, double amplitude_m, std::size_t instants);
   void make_tracker(const TunnelEffects& law, std::size_t instants);
+  void start_waves(const Amplitudes& amplitudes);
   void advance_waves();
 
   const Scenario& scenario_;
@@ -51,11 +53,12 @@ class Histories {
   std::vector<float> pressure_noise_, acceleration_noise_;  // [instants], standard normal
 
   NormalNumbers wave_numbers_;
+  SlowSeries slow_;
   std::size_t wave_instant_ = 0;
-  std::vector<double> real_, imaginary_;            // [waves], of the instant wave_instant_
-  std::vector<double> turn_real_, turn_imaginary_;  // one step's rotation and decay
-  std::vector<double> renewal_m_;                   // what keeps the variance up
-  std::vector<float> normals_;                      // [2 * waves]
+  std::vector<std::complex<double>> turn_;            // [waves], what a step of convection does
+  std::vector<double> wave_m_;                        // [waves]
+  std::vector<std::complex<double>> driving_, wave_;  // [waves], x and y of SlowSeries, of unit variance
+  std::vector<float> normals_;                        // [2 * waves]
 };
 
 }  // namespace bentlight::demo

@@ -40,32 +40,34 @@ Json random_json(const Scenario& scenario) {
   for (const Wave& wave : scenario.waves) {
     waves.push_back({{"kx_rad_m", wave.kx_rad_m}, {"ky_rad_m", wave.ky_rad_m}, {"share", wave.share}});
   }
-  return {{"law",
-           "plane waves Re(z(t) exp(i (kx x + ky y))), shares of the variance drawn from the plane spectrum "
-           "(k^2 + "
-           "k0^2)^(-11/6) with k0 = 2 pi / outer scale; the correlation of each z over a time t is exp(-t / "
-           "decorrelation_time_s - i kx U_c t), so a point's spectrum is a sum of Lorentz lines at kx U_c / "
-           "(2 pi)"},
-          {"outer_scale_m", random.outer_scale_m},
-          {"convective_speed_m_s", random.convective_speed_m_s},
-          {"convective_direction", "along +x"},
-          {"decorrelation_time_s", random.decorrelation_time_s},
-          {"waves", std::move(waves)}};
+  return {
+      {"law",
+       "plane waves Re(z(t) exp(i (kx x + ky y))), shares of the variance drawn from the plane spectrum "
+       "(k^2 + k0^2)^(-11/6) with k0 = 2 pi / outer scale; the correlation of each z over a time t is "
+       "(a exp(-t / a) - b exp(-t / b)) / (a - b) exp(-i kx U_c t) with a and b the forgetting times, so a "
+       "point's spectrum is a sum of narrow lines at kx U_c / (2 pi)"},
+      {"outer_scale_m", random.outer_scale_m},
+      {"convective_speed_m_s", random.convective_speed_m_s},
+      {"convective_direction", "along +x"},
+      {"forgetting_s", {random.forgetting.long_s, random.forgetting.short_s}},
+      {"waves", std::move(waves)}};
 }
 
 Json roll_up_json(const RollUp& roll_up) {
-  return {{"law",
-           "A m(t) cos(2 pi f (x / U_c - t) - psi(t)); m = exp(s g - s^2), g a unit Gaussian series with "
-           "correlation "
-           "exp(-t / modulation_memory_s), so the mean of m^2 is 1; psi wanders so that exp(-t / "
-           "phase_memory_s) of "
-           "the phase is left: the line's full width at half height is at least 1 / (pi phase_memory_s)"},
-          {"strouhal", roll_up.strouhal},
-          {"frequency_hz", roll_up.frequency_hz},
-          {"wavelength_m", roll_up.wavelength_m},
-          {"phase_memory_s", roll_up.phase_memory_s},
-          {"modulation", roll_up.modulation},
-          {"modulation_memory_s", roll_up.modulation_memory_s}};
+  return {
+      {"law",
+       "A m(t) cos(2 pi f (x / U_c - t) - psi(t)); m = exp(s g - s^2) with s the modulation, g a unit "
+       "Gaussian "
+       "series that forgets like the waves, so the mean of m^2 is 1; psi sums up a Gaussian wander of the "
+       "frequency with correlation exp(-t / wander_memory_s)"},
+      {"strouhal", roll_up.strouhal},
+      {"frequency_hz", roll_up.frequency_hz},
+      {"wavelength_m", roll_up.wavelength_m},
+      {"wander_hz", roll_up.wander_hz},
+      {"wander_memory_s", roll_up.wander_memory_s},
+      {"modulation", roll_up.modulation},
+      {"modulation_forgetting_s",
+       {roll_up.modulation_forgetting.long_s, roll_up.modulation_forgetting.short_s}}};
 }
 
 Json law_json(const AngleLaw& law) {

@@ -28,11 +28,20 @@ struct Setting {
   double frame_rate_hz = 50e3;
 };
 
-/// The random wavefront: plane waves that convect downstream with one speed and slowly forget their phase.
+/// How a Gaussian series forgets: two first-order filters in a row, whose correlation over a time t is
+/// (long e^(-t / long) - short e^(-t / short)) / (long - short). The second filter keeps the lines of the
+/// spectrum narrow: one alone would lift the steep spectrum of the random wavefront at high frequencies.
+struct Forgetting {
+  double long_s = 0.0;
+  double short_s = 0.0;
+};
+
+/// The random wavefront: plane waves that convect downstream with one speed and slowly forget amplitude and
+/// phase.
 struct RandomWavefront {
   double outer_scale_m = 0.12;
   double convective_speed_m_s = 0.0;
-  double decorrelation_time_s = 8e-3;  // 1/e of each wave's correlation, seen from the moving air
+  Forgetting forgetting = {.long_s = 6e-3, .short_s = 2e-3};  // seen from the moving air
   std::size_t rings = 8;       // of wavenumber, from half of 2 pi / outer scale to 8 waves per aperture
   std::size_t directions = 8;  // in each ring
 };
@@ -44,16 +53,17 @@ struct Wave {
   double share = 0.0;
 };
 
-/// The shear layer's roll-up: W = A m(t) cos(2 pi f (x / U_c - t) - psi(t)), where psi wanders (Wiener) so
-/// that the phase is forgotten in phase_memory_s, and m = exp(s g - s^2) with a slow Gaussian g makes strong
-/// events intermittent; the mean of m^2 is 1.
+/// The shear layer's roll-up: W = A m(t) cos(2 pi f (x / U_c - t) - psi(t)). Its frequency wanders, which psi
+/// sums up, and m = exp(s g - s^2) with a slow Gaussian g makes strong events intermittent; the mean of m^2
+/// is 1.
 struct RollUp {
   double strouhal = 2.4;  // with reference length and velocity
   double frequency_hz = 0.0;
   double wavelength_m = 0.0;
-  double phase_memory_s = 6e-3;
+  double wander_hz = 65.0;  // rms, Gaussian, of first order with the next line's memory
+  double wander_memory_s = 1e-3;
   double modulation = 0.4;  // s
-  double modulation_memory_s = 5e-3;
+  Forgetting modulation_forgetting = {.long_s = 4e-3, .short_s = 1e-3};
 };
 
 /// What the tunnel adds and a simulation does not have.

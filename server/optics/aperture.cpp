@@ -74,12 +74,12 @@ Expected<Aperture> Aperture::of(const Grid& grid) {
 }
 
 bool Aperture::has_light_near(double x_m, double y_m) const {
-  // The rim of a question's disc is walked at a few hundred places; a scan over the points is fast enough for
-  // that.
-  for (std::size_t p = 0; p < points(); ++p) {
-    if (std::abs(x_m_[p] - x_m) <= step_m_ && std::abs(y_m_[p] - y_m) <= step_m_) return true;
-  }
-  return false;
+  // Points stand row by row, so that y rises: only the few rows within a step are looked at.
+  const auto first = std::ranges::lower_bound(y_m_, y_m - step_m_);
+  const auto last = std::ranges::upper_bound(y_m_, y_m + step_m_);
+  const auto begin = x_m_.begin() + (first - y_m_.begin());
+  return std::any_of(begin, begin + std::max<std::ptrdiff_t>(0, last - first),
+                     [&](double x) { return std::abs(x - x_m) <= step_m_; });
 }
 
 Expected<Aperture> Aperture::cut(const ApertureCut& cut) const {

@@ -31,7 +31,7 @@ struct ApertureCut {
   double obscuration = 0.0;  // ratio of diameters
   double center_x_m = 0.0;   // relative to the center of the view's own aperture
   double center_y_m = 0.0;
-  bool is_whole() const { return diameter_m == 0.0 && obscuration == 0.0; }
+  bool is_whole() const { return *this == ApertureCut{}; }
   bool operator==(const ApertureCut&) const = default;
 };
 

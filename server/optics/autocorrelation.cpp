@@ -1,14 +1,19 @@
 #include "optics/autocorrelation.h"
 
+#include <Eigen/Core>
 #include <algorithm>
-#include <numeric>
+#include <bit>
+#include <complex>
 #include <stdexcept>
 
-#include <Eigen/Core>
+#include "optics/fft.h"
 
 namespace bentlight::optics {
 
 namespace {
+
+// Up to here direct sums are faster than transforms.
+constexpr std::size_t most_direct_lags = 48;
 
 std::vector<double> without_mean(std::span<const double> values) {
   double sum = 0.0;
@@ -19,40 +24,92 @@ std::vector<double> without_mean(std::span<const double> values) {
   return centered;
 }
 
-double lagged_sum(const std::vector<double>& centered, std::size_t lag) {
-  const auto count = static_cast<Eigen::Index>(centered.size() - lag);
-  const Eigen::Map<const Eigen::VectorXd> early(centered.data(), count), late(centered.data() + lag, count);
-  return early.dot(late);
+/// Sums over t of x[t] x[t + k] for k = 0 … lags, tile by tile so that all lags find the tile in cache.
+std::vector<double> lagged_sums_direct(std::span<const double> x, std::size_t lags) {
+  constexpr std::size_t tile = 1024;
+  std::vector<double> sums(lags + 1, 0.0);
+  for (std::size_t first = 0; first < x.size(); first += tile) {
+    for (std::size_t lag = 0; lag <= lags && first + lag < x.size(); ++lag) {
+      const std::size_t count = std::min(tile, x.size() - lag - first);
+      const Eigen::Map<const Eigen::VectorXd> early(x.data() + first, static_cast<Eigen::Index>(count));
+      const Eigen::Map<const Eigen::VectorXd> late(x.data() + first + lag, static_cast<Eigen::Index>(count));
+      sums[lag] += early.dot(late);
+    }
+  }
+  return sums;
+}
+
+/// The same by transforms: each piece of the series against itself and the piece that follows. Products of
+/// the spectra are added up and transformed back once.
+std::vector<double> lagged_sums_by_fft(std::span<const double> x, std::size_t lags) {
+  const std::size_t piece = std::bit_ceil(lags + 1);
+  const RealFft fft(2 * piece);
+  std::vector<double> early(fft.length(), 0.0), both(fft.length());
+  std::vector<std::complex<double>> early_spectrum(fft.bins()), both_spectrum(fft.bins()), sum(fft.bins());
+  for (std::size_t first = 0; first < x.size(); first += piece) {
+    const auto here = x.subspan(first, std::min(piece, x.size() - first));
+    const auto reach = x.subspan(first, std::min(2 * piece, x.size() - first));
+    std::ranges::fill(early, 0.0);
+    std::ranges::fill(both, 0.0);
+    std::ranges::copy(here, early.begin());
+    std::ranges::copy(reach, both.begin());
+    fft.forward(early, early_spectrum);
+    fft.forward(both, both_spectrum);
+    for (std::size_t k = 0; k < sum.size(); ++k) sum[k] += std::conj(early_spectrum[k]) * both_spectrum[k];
+  }
+  fft.inverse(sum, both);
+  both.resize(lags + 1);
+  for (double& value : both) value /= static_cast<double>(fft.length());
+  return both;
+}
+
+std::vector<double> lagged_sums(std::span<const double> x, std::size_t lags) {
+  return lags <= most_direct_lags ? lagged_sums_direct(x, lags) : lagged_sums_by_fft(x, lags);
+}
+
+struct GeyerSum {
+  double sum = 0.0;     // of (1 - k/T) r_k over k >= 1
+  bool is_cut = false;  // whether a pair that is not positive was met
+};
+
+GeyerSum initial_positive_sequence(std::span<const double> sums, std::size_t count) {
+  GeyerSum found;
+  const auto weighted = [&](std::size_t lag) {
+    return (1.0 - static_cast<double>(lag) / static_cast<double>(count)) * sums[lag] / sums[0];
+  };
+  // Pairs begin with r_0 + r_1; r_0 itself is the 1 of the formula and not in the sum.
+  for (std::size_t lag = 0; lag + 1 < sums.size(); lag += 2) {
+    if (sums[lag] + sums[lag + 1] <= 0.0) return {found.sum, true};
+    found.sum += (lag == 0 ? 0.0 : weighted(lag)) + weighted(lag + 1);
+  }
+  return found;
 }
 
 }  // namespace
 
 std::vector<double> autocorrelation(std::span<const double> values, std::size_t max_lag) {
   if (values.size() <= max_lag) throw std::invalid_argument("autocorrelation: more lags than values");
-  const auto centered = without_mean(values);
-  const double square = lagged_sum(centered, 0);
-  std::vector<double> correlation(max_lag + 1, 0.0);
-  correlation[0] = 1.0;
-  for (std::size_t lag = 1; lag <= max_lag && square > 0.0; ++lag) correlation[lag] = lagged_sum(centered, lag) / square;
-  return correlation;
+  auto sums = lagged_sums(without_mean(values), max_lag);
+  const double square = sums.front();
+  for (double& sum : sums) sum = square > 0.0 ? sum / square : 0.0;
+  sums.front() = 1.0;
+  return sums;
 }
 
 double effective_samples(std::span<const double> values) {
   const std::size_t count = values.size();
   if (count < 4) return static_cast<double>(count);
   const auto centered = without_mean(values);
-  const double square = lagged_sum(centered, 0);
-  if (square <= 0.0) return static_cast<double>(count);
-  // Pairs begin with r_0 + r_1; r_0 itself is the 1 of the formula and not in the sum.
-  double sum = 0.0;
-  for (std::size_t lag = 0; lag + 1 < count; lag += 2) {
-    const double even = lag == 0 ? 1.0 : lagged_sum(centered, lag) / square;
-    const double odd = lagged_sum(centered, lag + 1) / square;
-    if (even + odd <= 0.0) break;
-    const auto weight = [&](std::size_t k) { return 1.0 - static_cast<double>(k) / static_cast<double>(count); };
-    sum += (lag == 0 ? 0.0 : weight(lag) * even) + weight(lag + 1) * odd;
+  // Few lags first: most series forget themselves soon. Each further step looks sixteen times as far.
+  for (std::size_t lags = most_direct_lags - 1;; lags = 16 * lags + 15) {
+    const std::size_t seen = std::min(lags, count - 1);
+    const auto sums = lagged_sums(centered, seen);
+    if (sums.front() <= 0.0) return static_cast<double>(count);
+    const GeyerSum geyer = initial_positive_sequence(sums, count);
+    if (geyer.is_cut || seen == count - 1) {
+      return static_cast<double>(count) / std::max(1.0 + 2.0 * geyer.sum, 1.0 / static_cast<double>(count));
+    }
   }
-  return static_cast<double>(count) / std::max(1.0 + 2.0 * sum, 1.0 / static_cast<double>(count));
 }
 
 }  // namespace bentlight::optics

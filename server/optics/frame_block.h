@@ -17,8 +17,9 @@ struct FrameRange {
 
 /// Consecutive frames, only the points of an aperture, in metres.
 ///
-/// A frame's value at a point is `values + shift_m`: the shift is the frame's value at its first point, taken out in
-/// double before anything is rounded to float. A piston a thousand times the ripple then costs no digits.
+/// A frame's value at a point is `values + shift_m`: the shift is the frame's value at its first point, taken
+/// out in double before anything is rounded to float. A piston a thousand times the ripple then costs no
+/// digits.
 struct FrameBlock {
   FrameRange frames;
   std::size_t points = 0;

@@ -77,11 +77,11 @@ void add_about_pilot_of(
   }
 }
 
-/// Calls `four(f)` for every whole group of four frames and `one(f)` for each that is left.
-template <class Four, class One>
-void in_fours(std::size_t count, Four four, One one) {
+/// Calls `group(f)` for every whole group of frames and `one(f)` for each that is left.
+template <class Group, class One>
+void in_groups(std::size_t count, Group group, One one) {
   std::size_t f = 0;
-  for (; f + 4 <= count; f += 4) four(f);
+  for (; f + frames_at_once <= count; f += frames_at_once) group(f);
   for (; f < count; ++f) one(f);
 }
 
@@ -93,8 +93,9 @@ void plane_sums(const float* frames,
                 const float* a,
                 const float* b,
                 double* sums) {
-  in_fours(
-      count, [&](std::size_t f) { plane_sums_of<4>(frames + f * points, points, a, b, sums + f * 3); },
+  in_groups(
+      count,
+      [&](std::size_t f) { plane_sums_of<frames_at_once>(frames + f * points, points, a, b, sums + f * 3); },
       [&](std::size_t f) { plane_sums_of<1>(frames + f * points, points, a, b, sums + f * 3); });
 }
 
@@ -114,32 +115,28 @@ void subtract_plane(float* frames,
       subtract_plane_of<Frames, false>(first, points, a, b, center, plane + f * 3, squares + f);
     }
   };
-  in_fours(
-      count, [&](std::size_t f) { subtract.template operator()<4>(f); },
+  in_groups(
+      count, [&](std::size_t f) { subtract.template operator()<frames_at_once>(f); },
       [&](std::size_t f) { subtract.template operator()<1>(f); });
 }
 
-void subtract_center(float* frames,
-                     std::size_t count,
-                     std::size_t points,
-                     const float* center,
-                     const float* lift,
-                     double* squares) {
+void lift(float* frames, std::size_t count, std::size_t points, const float* lift, double* squares) {
   for (std::size_t f = 0; f < count; ++f) {
     float* const frame = frames + f * points;
-    double total = 0.0;
-    for (std::size_t tile = 0; tile < points; tile += tile_points) {
-      const std::size_t end = std::min(points, tile + tile_points);
-      float sum = 0.0F;
-      for (std::size_t p = tile; p < end; ++p) {
-        const float left = frame[p] - (center != nullptr ? center[p] : 0.0F) + lift[f];
-        frame[p] = left;
-        sum += left * left;
-      }
-      total += static_cast<double>(sum);
-    }
-    squares[f] = total;
+    for (std::size_t p = 0; p < points; ++p) frame[p] += lift[f];
+    squares[f] = square_sum({frame, points});
   }
+}
+
+double square_sum(std::span<const float> frame) {
+  double total = 0.0;
+  for (std::size_t tile = 0; tile < frame.size(); tile += tile_points) {
+    const std::size_t end = std::min(frame.size(), tile + tile_points);
+    float sum = 0.0F;
+    for (std::size_t p = tile; p < end; ++p) sum += frame[p] * frame[p];
+    total += static_cast<double>(sum);
+  }
+  return total;
 }
 
 void add_about_pilot(const float* frames,
@@ -148,8 +145,11 @@ void add_about_pilot(const float* frames,
                      const float* pilot,
                      float* sum,
                      float* squares) {
-  in_fours(
-      count, [&](std::size_t f) { add_about_pilot_of<4>(frames + f * points, points, pilot, sum, squares); },
+  in_groups(
+      count,
+      [&](std::size_t f) {
+        add_about_pilot_of<frames_at_once>(frames + f * points, points, pilot, sum, squares);
+      },
       [&](std::size_t f) { add_about_pilot_of<1>(frames + f * points, points, pilot, sum, squares); });
 }
 

@@ -7,17 +7,19 @@
 
 namespace bentlight::optics {
 
+/// Frames that the loops take together. Groups of it cost least.
+inline constexpr std::size_t frames_at_once = 4;
+
 /// Sums over points of frame, frame * a and frame * b, for each frame.
 ///
 ///   shapes  frames [count][points]; a, b [points]; sums [count][3]
 void plane_sums(
     const float* frames, std::size_t count, std::size_t points, const float* a, const float* b, double* sums);
 
-/// In place: frame -= plane[0] + plane[1] * a + plane[2] * b + center. Gives the sum of squares of what is
-/// left.
+/// In place: frame -= plane[0] + plane[1] * a + plane[2] * b + center. Gives the sum of squares of the rest.
 ///
-///   shapes  frames [count][points]; a, b [points]; center [points] or null; plane [count][3]; squares
-///   [count]
+///   shapes  frames [count][points]; a, b [points]; center [points] or null; plane [count][3];
+///           squares [count]
 void subtract_plane(float* frames,
                     std::size_t count,
                     std::size_t points,
@@ -27,16 +29,13 @@ void subtract_plane(float* frames,
                     const float* plane,
                     double* squares);
 
-/// In place: frame -= center - lift, with lift [count] added to all points of a frame. Gives the sum of
-/// squares.
+/// In place: frame += lift, one number to all points of a frame. Gives the sum of squares.
 ///
-///   shapes  center [points] or null
-void subtract_center(float* frames,
-                     std::size_t count,
-                     std::size_t points,
-                     const float* center,
-                     const float* lift,
-                     double* squares);
+///   shapes  frames [count][points]; lift, squares [count]
+void lift(float* frames, std::size_t count, std::size_t points, const float* lift, double* squares);
+
+/// Sum of squares of one frame.
+double square_sum(std::span<const float> frame);
 
 /// sum += frame - pilot, squares += (frame - pilot)^2, over all frames.
 ///

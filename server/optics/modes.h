@@ -32,16 +32,20 @@ std::size_t ansi_index(ZernikeOrder order);
 
 /// Unit variance over the unit disc (Noll's normalisation). `rho` from 0 to 1, `theta` in radians from the x
 /// axis.
+///
+///   source  Noll (1976), equations 1 and 2: the explicit sum, good to n = 20 or so
 double zernike(ZernikeOrder order, double rho, double theta);
 
 /// Modes on the points of one aperture, with mean over points of mode j times mode k = 1 for j = k and 0
 /// otherwise.
 class ModeBasis {
  public:
-  /// The first `count` modes.
+  /// The first `count` modes, on the disc of the aperture's center and radius.
   ///
   ///   errors  degenerate_aperture when the points cannot tell so many modes apart; the text says how many
-  ///   they can cost    points * count^2 multiplications
+  ///           they can
+  ///   cost    4 points count^2 operations
+  ///   source  radial polynomials by Kintner's recurrence, Opt. Acta 23 (1976) 679
   static Expected<ModeBasis> zernike(const Aperture& aperture, std::size_t count);
 
   std::size_t points() const { return static_cast<std::size_t>(modes_.rows()); }

@@ -11,8 +11,8 @@ namespace bentlight::optics {
 
 /// Count, mean and sum of squared deviations at every point.
 ///
-///   source  merging after Chan, Golub and LeVeque, The American Statistician 37 (1983) 242; Pébay,
-///   SAND2008-6212
+///   source  merging after Chan, Golub and LeVeque, The American Statistician 37 (1983) 242, and Pébay,
+///           SAND2008-6212
 struct MomentMaps {
   std::size_t count = 0;     // frames
   std::vector<double> mean;  // [points]

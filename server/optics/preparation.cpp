@@ -10,11 +10,22 @@ namespace bentlight::optics {
 
 namespace {
 
-using FrameMatrix = Eigen::Map<Eigen::MatrixXf>;  // [points, frames]: a block as columns
+constexpr double none = std::numeric_limits<double>::quiet_NaN();
 
-FrameMatrix matrix_of(FrameBlock& block) {
-  return {block.values.data(), static_cast<Eigen::Index>(block.points),
-          static_cast<Eigen::Index>(block.frames.count)};
+// Frames to one matrix product: many enough for the product to run from registers, few enough for its second
+// use of the frames to find them in cache.
+constexpr std::size_t product_frames = 64;
+
+/// Takes out of `map` what it holds of the modes in `removed`. Gives their coefficients.
+std::vector<double> remove_from(std::vector<double>& map,
+                                const ModeBasis& basis,
+                                std::span<const std::size_t> removed) {
+  auto coefficients = basis.coefficients(map, removed);
+  for (std::size_t i = 0; i < removed.size(); ++i) {
+    const auto mode = basis.mode(removed[i]);
+    for (std::size_t p = 0; p < map.size(); ++p) map[p] -= coefficients[i] * mode[p];
+  }
+  return coefficients;
 }
 
 }  // namespace
@@ -22,92 +33,104 @@ FrameMatrix matrix_of(FrameBlock& block) {
 Expected<FramePreparation> FramePreparation::make(const Aperture& aperture,
                                                   const Removal& removal,
                                                   std::span<const double> mean) {
-  if (removal.mean != !mean.empty())
-    throw std::invalid_argument("FramePreparation: a mean map goes with removing it");
-  const auto basis = ModeBasis::zernike(aperture, std::max<std::size_t>(1, removal.highest_mode()));
+  if (removal.mean == mean.empty() || (removal.mean && mean.size() != aperture.points())) {
+    throw std::invalid_argument(
+        "FramePreparation: a mean map of the aperture's points goes with removing it");
+  }
+  const auto basis = ModeBasis::zernike(aperture, std::max<std::size_t>(3, removal.highest_mode()));
   if (!basis) return failure(basis);
   FramePreparation preparation;
-  preparation.is_plane_ = removal.is_plane();
-  preparation.keeps_piston_ = !removal.has(1);
-  preparation.modes_.resize(static_cast<Eigen::Index>(aperture.points()),
-                            static_cast<Eigen::Index>(removal.modes.size()));
-  for (std::size_t i = 0; i < removal.modes.size(); ++i) {
-    preparation.modes_.col(static_cast<Eigen::Index>(i)) =
-        basis->modes_float().col(static_cast<Eigen::Index>(removal.modes[i]) - 1);
+  preparation.takes_ = {removal.has(1), removal.has(2), removal.has(3)};
+  preparation.tip_.assign(basis->mode_float(2).begin(), basis->mode_float(2).end());
+  preparation.tilt_.assign(basis->mode_float(3).begin(), basis->mode_float(3).end());
+  const auto higher = std::ranges::upper_bound(removal.modes, std::size_t{3});
+  preparation.higher_.resize(static_cast<Eigen::Index>(aperture.points()), removal.modes.end() - higher);
+  for (auto mode = higher; mode != removal.modes.end(); ++mode) {
+    preparation.higher_.col(mode - higher) = basis->modes_float().col(static_cast<Eigen::Index>(*mode) - 1);
   }
   if (removal.mean) {
     std::vector<double> center(mean.begin(), mean.end());
-    const auto coefficients = basis->coefficients(mean, removal.modes);
-    for (std::size_t i = 0; i < removal.modes.size(); ++i) {
-      const auto mode = basis->mode(removal.modes[i]);
-      for (std::size_t p = 0; p < center.size(); ++p) center[p] -= coefficients[i] * mode[p];
-    }
+    remove_from(center, *basis, removal.modes);
+    // Where piston is kept, the mean's own goes with the frames' shifts, in double, and not through the float
+    // map.
+    preparation.center_piston_m_ = remove_from(center, *basis, std::array<std::size_t, 1>{1}).front();
     preparation.center_.assign(center.begin(), center.end());
   }
   return preparation;
 }
 
 void FramePreparation::prepare(FrameBlock& block, Scratch& scratch) const {
-  scratch.mean_square.resize(block.frames.count);
-  for (std::size_t f = 0; f < block.frames.count; ++f) {
-    if (!block.finite[f]) std::ranges::fill(block.frame(f), 0.0F);
+  if (block.points != tip_.size())
+    throw std::invalid_argument("FramePreparation: block and aperture differ in points");
+  const std::size_t count = block.frames.count;
+  scratch.mean_square.resize(count);
+  for (std::size_t f = 0; f < count; ++f) {
+    if (!block.finite[f]) std::ranges::fill(block.frame(f), 0.0F), block.shift_m[f] = 0.0;
   }
-  if (is_plane_) {
-    remove_plane(block, scratch);
-  } else {
-    remove_modes(block, scratch);
-  }
-  for (std::size_t f = 0; f < block.frames.count; ++f) {
+  remove_plane(block, scratch);
+  if (higher_.cols() > 0) remove_higher_modes(block, scratch);
+  for (std::size_t f = 0; f < count; ++f) {
     block.shift_m[f] = 0.0;
-    scratch.mean_square[f] = block.finite[f] ? scratch.mean_square[f] / static_cast<double>(block.points)
-                                             : std::numeric_limits<double>::quiet_NaN();
+    scratch.mean_square[f] =
+        block.finite[f] ? scratch.mean_square[f] / static_cast<double>(block.points) : none;
   }
 }
 
 void FramePreparation::remove_plane(FrameBlock& block, Scratch& scratch) const {
-  const std::size_t count = block.frames.count;
-  const float* const tip = modes_.col(1).data();
-  const float* const tilt = modes_.col(2).data();
-  scratch.sums.resize(3 * count);
-  scratch.plane.resize(3 * count);
-  plane_sums(block.values.data(), count, block.points, tip, tilt, scratch.sums.data());
-  for (std::size_t i = 0; i < 3 * count; ++i) {
-    scratch.plane[i] = static_cast<float>(scratch.sums[i] / static_cast<double>(block.points));
+  const double scale = 1.0 / static_cast<double>(block.points);
+  const float* const center = center_.empty() ? nullptr : center_.data();
+  // A kept piston comes back only after the higher modes are out, which it would disturb.
+  const bool lifts_here = !takes_[0] && higher_.cols() == 0;
+  scratch.sums.resize(3 * frames_at_once);
+  scratch.plane.resize(3 * frames_at_once);
+  for (std::size_t first = 0; first < block.frames.count; first += frames_at_once) {
+    // Group by group, so that the second touch finds the frames in cache.
+    const std::size_t count = std::min(frames_at_once, block.frames.count - first);
+    float* const frames = block.frame(first).data();
+    plane_sums(frames, count, block.points, tip_.data(), tilt_.data(), scratch.sums.data());
+    for (std::size_t f = 0; f < count; ++f) {
+      for (std::size_t k = 0; k < 3; ++k) {
+        scratch.plane[3 * f + k] = takes_[k] ? static_cast<float>(scratch.sums[3 * f + k] * scale) : 0.0F;
+      }
+      if (lifts_here) scratch.plane[3 * f] = static_cast<float>(center_piston_m_ - block.shift_m[first + f]);
+    }
+    subtract_plane(frames, count, block.points, tip_.data(), tilt_.data(), center, scratch.plane.data(),
+                   scratch.mean_square.data() + first);
   }
-  subtract_plane(block.values.data(), count, block.points, tip, tilt,
-                 center_.empty() ? nullptr : center_.data(), scratch.plane.data(),
-                 scratch.mean_square.data());
 }
 
-void FramePreparation::remove_modes(FrameBlock& block, Scratch& scratch) const {
-  const std::size_t count = block.frames.count;
-  if (modes_.cols() > 0) {
-    auto frames = matrix_of(block);
-    scratch.coefficients.noalias() = modes_.transpose() * frames;
+void FramePreparation::remove_higher_modes(FrameBlock& block, Scratch& scratch) const {
+  scratch.plane.resize(std::max<std::size_t>(product_frames, 3 * frames_at_once));
+  for (std::size_t first = 0; first < block.frames.count; first += product_frames) {
+    const std::size_t count = std::min(product_frames, block.frames.count - first);
+    Eigen::Map<Eigen::MatrixXf> frames(block.frame(first).data(), higher_.rows(),
+                                       static_cast<Eigen::Index>(count));
+    scratch.coefficients.noalias() = higher_.transpose() * frames;
     scratch.coefficients /= static_cast<float>(block.points);
-    frames.noalias() -= modes_ * scratch.coefficients;
+    frames.noalias() -= higher_ * scratch.coefficients;
+    for (std::size_t f = 0; f < count; ++f) {
+      scratch.plane[f] = takes_[0] ? 0.0F : static_cast<float>(block.shift_m[first + f] - center_piston_m_);
+    }
+    lift(frames.data(), count, block.points, scratch.plane.data(), scratch.mean_square.data() + first);
   }
-  scratch.plane.assign(count, 0.0F);
-  for (std::size_t f = 0; f < count; ++f) {
-    if (keeps_piston_ && block.finite[f]) scratch.plane[f] = static_cast<float>(block.shift_m[f]);
-  }
-  subtract_center(block.values.data(), count, block.points, center_.empty() ? nullptr : center_.data(),
-                  scratch.plane.data(), scratch.mean_square.data());
 }
 
 std::vector<double> mode_coefficients(const FrameBlock& block, const ModeBasis& basis, std::size_t modes) {
+  if (block.points != basis.points() || modes > basis.count()) {
+    throw std::invalid_argument(
+        "mode_coefficients: block and basis differ in points, or the basis is too short");
+  }
   const std::size_t frames = block.frames.count;
-  std::vector<double> coefficients(modes * frames);
-  const double scale = 1.0 / static_cast<double>(block.points);
+  std::vector<double> coefficients(modes * frames, none);
+  const auto used = basis.modes().leftCols(static_cast<Eigen::Index>(modes));
   for (std::size_t f = 0; f < frames; ++f) {
-    const Eigen::Map<const Eigen::VectorXf> frame(block.frame(f).data(),
-                                                  static_cast<Eigen::Index>(block.points));
-    for (std::size_t k = 0; k < modes; ++k) {
-      // In double: a tilt a thousand times the mode asked for must not leak into it through rounding.
-      const double sum = basis.modes().col(static_cast<Eigen::Index>(k)).dot(frame.cast<double>());
-      coefficients[k * frames + f] = block.finite[f] ? sum * scale + (k == 0 ? block.shift_m[f] : 0.0)
-                                                     : std::numeric_limits<double>::quiet_NaN();
-    }
+    if (!block.finite[f]) continue;
+    const Eigen::Map<const Eigen::VectorXf> frame(block.frame(f).data(), used.rows());
+    // In double: a tilt a thousand times the mode asked for must not leak into it through rounding.
+    const Eigen::VectorXd means = used.transpose() * frame.cast<double>() / static_cast<double>(block.points);
+    for (std::size_t k = 0; k < modes; ++k)
+      coefficients[k * frames + f] = means[static_cast<Eigen::Index>(k)];
+    if (modes > 0) coefficients[f] += block.shift_m[f];
   }
   return coefficients;
 }

@@ -65,13 +65,15 @@ Expected<Removal> parse_removal(std::string_view text) {
 std::string to_text(const Removal& removal) {
   std::vector<std::string> names;
   const std::size_t first = unbroken(removal.modes);
-  if (first > 3) {
+  // Two modes are piston and tip alone, which no name but this one says.
+  const bool is_counted = first == 2 || first > 3;
+  if (is_counted) {
     names.push_back(fmt::format("modes:{}", first));
   } else {
     if (removal.has(1)) names.emplace_back("piston");
     if (removal.has(2)) names.emplace_back("tilt");
-    if (removal.has(4)) names.emplace_back("focus");
   }
+  if (first < 4 && removal.has(4)) names.emplace_back("focus");
   if (removal.mean) names.emplace_back("mean");
   return names.empty() ? "none" : fmt::format("{}", fmt::join(names, ","));
 }

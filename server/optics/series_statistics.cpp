@@ -1,12 +1,75 @@
 #include "optics/series_statistics.h"
 
 #include <algorithm>
+#include <array>
+#include <bit>
 #include <cmath>
+#include <cstdint>
 #include <numbers>
-#include <numeric>
 #include <stdexcept>
+#include <utility>
 
 namespace bentlight::optics {
+
+namespace {
+
+/// Bits that order as the doubles do: the sign turned over, and all bits of negative values.
+std::uint64_t ordered_bits(double value) {
+  const auto bits = std::bit_cast<std::uint64_t>(value);
+  return bits ^ ((bits >> 63) != 0 ? ~std::uint64_t{0} : std::uint64_t{1} << 63);
+}
+
+double from_ordered_bits(std::uint64_t bits) {
+  return std::bit_cast<double>(bits ^ ((bits >> 63) != 0 ? std::uint64_t{1} << 63 : ~std::uint64_t{0}));
+}
+
+/// One pass of a radix sort by the 11 bits from `shift` on; nothing to do when all values agree in them.
+void sort_by_digit(std::vector<std::uint64_t>& keys, std::vector<std::uint64_t>& room, int shift) {
+  constexpr std::size_t digits = 2048;
+  const auto digit = [shift](std::uint64_t key) { return (key >> shift) % digits; };
+  std::array<std::size_t, digits> place = {};
+  for (const std::uint64_t key : keys) ++place[digit(key)];
+  if (place[digit(keys.front())] == keys.size()) return;
+  std::size_t before = 0;
+  for (std::size_t& count : place) before += std::exchange(count, before);
+  for (const std::uint64_t key : keys) room[place[digit(key)]++] = key;
+  keys.swap(room);
+}
+
+/// The least of 1, 2, 2.5, 5 and 10 times a power of ten that is not below `width`.
+double round_step(double width) {
+  const double power = std::pow(10.0, std::floor(std::log10(width)));
+  for (const double factor : {1.0, 2.0, 2.5, 5.0}) {
+    if (factor * power >= width * (1 - 1e-12)) return factor * power;
+  }
+  return 10.0 * power;
+}
+
+std::vector<double> round_edges(std::span<const double> values, double low, double high) {
+  const std::vector<double> ascending = sorted(values);
+  const double quartiles = percentile_of_sorted(ascending, 75) - percentile_of_sorted(ascending, 25);
+  const double wanted = 2 * quartiles / std::cbrt(static_cast<double>(values.size()));
+  // Rounding up at most doubles the width, so that 16 to 126 whole bins remain, and one more at either end.
+  const double step = round_step(std::clamp(wanted, (high - low) / 126, (high - low) / 32));
+  const double first = std::floor(low / step);
+  const auto bins = static_cast<std::size_t>(std::max(1.0, std::ceil(high / step) - first));
+  std::vector<double> edges(bins + 1);
+  for (std::size_t i = 0; i <= bins; ++i) edges[i] = (first + static_cast<double>(i)) * step;
+  // The multiples may fall a rounding short of the values that they enclose.
+  edges.front() = std::min(edges.front(), low);
+  edges.back() = std::max(edges.back(), high);
+  return edges;
+}
+
+std::vector<double> equal_edges(double low, double high, std::size_t bins) {
+  std::vector<double> edges(bins + 1, high);
+  for (std::size_t i = 0; i < bins; ++i) {
+    edges[i] = low + (high - low) * static_cast<double>(i) / static_cast<double>(bins);
+  }
+  return edges;
+}
+
+}  // namespace
 
 Moments moments(std::span<const double> values) {
   if (values.size() < 2) throw std::invalid_argument("moments: fewer than two values");
@@ -33,70 +96,108 @@ Moments moments(std::span<const double> values) {
           .kurtosis = variance > 0 ? m4 / count / (variance * variance) : 0.0};
 }
 
+std::vector<double> sorted(std::span<const double> values) {
+  std::vector<std::uint64_t> keys(values.size()), room(values.size());
+  std::ranges::transform(values, keys.begin(), ordered_bits);
+  for (int shift = 0; shift < 64 && !keys.empty(); shift += 11) sort_by_digit(keys, room, shift);
+  std::vector<double> ascending(values.size());
+  std::ranges::transform(keys, ascending.begin(), from_ordered_bits);
+  return ascending;
+}
+
+double percentile_of_sorted(std::span<const double> ascending, double percent) {
+  if (ascending.empty()) throw std::invalid_argument("percentile_of_sorted: no values");
+  const double place = percent / 100.0 * static_cast<double>(ascending.size() - 1);
+  const auto low = static_cast<std::size_t>(place);
+  const std::size_t next = std::min(low + 1, ascending.size() - 1);
+  return ascending[low] + (place - std::floor(place)) * (ascending[next] - ascending[low]);
+}
+
 std::vector<double> percentiles(std::span<const double> values, std::span<const double> percents) {
-  if (values.empty()) throw std::invalid_argument("percentiles: no values");
-  std::vector<double> sorted(values.begin(), values.end());
-  std::vector<std::size_t> order(percents.size());
-  std::iota(order.begin(), order.end(), std::size_t{0});
-  std::ranges::sort(order, {}, [&](std::size_t i) { return percents[i]; });
-  std::vector<double> found(percents.size());
-  auto settled = sorted.begin();  // below this the values are no greater than those above
-  for (const std::size_t i : order) {
-    const double place = percents[i] / 100.0 * static_cast<double>(sorted.size() - 1);
-    const auto low = sorted.begin() + static_cast<std::ptrdiff_t>(std::floor(place));
-    if (low >= settled) std::nth_element(settled, low, sorted.end());
-    settled = std::max(settled, low);
-    const double fraction = place - std::floor(place);
-    const double next = low + 1 == sorted.end() ? *low : *std::min_element(low + 1, sorted.end());
-    found[i] = *low + fraction * (next - *low);
-  }
+  const std::vector<double> ascending = sorted(values);
+  std::vector<double> found;
+  for (const double percent : percents) found.push_back(percentile_of_sorted(ascending, percent));
   return found;
 }
 
 Histogram histogram(std::span<const double> values, std::size_t bins) {
-  const auto [low, high] = std::ranges::minmax(values);
-  if (bins == 0) {
-    const auto quartiles = percentiles(values, std::vector{25.0, 75.0});
-    const double width = 2 * (quartiles[1] - quartiles[0]) / std::cbrt(static_cast<double>(values.size()));
-    bins = width > 0 ? static_cast<std::size_t>(std::clamp(std::ceil((high - low) / width), 16.0, 128.0)) : 16;
+  if (values.empty()) throw std::invalid_argument("histogram: no values");
+  auto [low, high] = std::ranges::minmax(values);
+  Histogram histogram;
+  if (low == high) {
+    // All alike: bins about the value, a tenth of it wide in all.
+    const double reach = low != 0.0 ? 0.05 * std::abs(low) : 0.5;
+    histogram.edges = equal_edges(low - reach, high + reach, bins == 0 ? 16 : bins);
+  } else {
+    histogram.edges = bins == 0 ? round_edges(values, low, high) : equal_edges(low, high, bins);
   }
-  const double first = low == high ? low - 0.5 : low, last = low == high ? high + 0.5 : high;
-  Histogram histogram{.edges = std::vector<double>(bins + 1), .counts = std::vector<double>(bins, 0.0)};
-  for (std::size_t i = 0; i <= bins; ++i) {
-    histogram.edges[i] = i == bins ? last : first + (last - first) * static_cast<double>(i) / static_cast<double>(bins);
-  }
-  const double per_bin = static_cast<double>(bins) / (last - first);
+  const std::vector<double>& edges = histogram.edges;
+  const std::size_t last_bin = edges.size() - 2;
+  histogram.counts.assign(last_bin + 1, 0.0);
+  const double per_bin = static_cast<double>(last_bin + 1) / (edges.back() - edges.front());
   for (const double value : values) {
-    auto bin = std::min(bins - 1, static_cast<std::size_t>((value - first) * per_bin));
-    // The division may land one bin off at an edge; the edges decide.
-    if (value < histogram.edges[bin]) --bin;
-    if (bin + 1 < bins && value >= histogram.edges[bin + 1]) ++bin;
+    auto bin = std::min(last_bin, static_cast<std::size_t>((value - edges.front()) * per_bin));
+    // The product may land one bin off at an edge; the edges decide.
+    if (value < edges[bin]) --bin;
+    if (bin < last_bin && value >= edges[bin + 1]) ++bin;
     histogram.counts[bin] += 1.0;
   }
   return histogram;
 }
 
-double normal_cdf(double z) { return 0.5 * std::erfc(-z / std::numbers::sqrt2); }
-
-std::optional<LogNormalFit> log_normal_fit(std::span<const double> values) {
-  if (values.size() < 2 || std::ranges::any_of(values, [](double value) { return !(value > 0.0); })) return std::nullopt;
-  std::vector<double> logarithms(values.size());
-  std::ranges::transform(values, logarithms.begin(), [](double value) { return std::log(value); });
-  const Moments of_logarithm = moments(logarithms);
-  if (of_logarithm.std == 0.0) return std::nullopt;
-  std::ranges::sort(logarithms);
-  LogNormalFit fit{.mu = of_logarithm.mean, .sigma = of_logarithm.std};
-  const auto count = static_cast<double>(logarithms.size());
-  for (std::size_t i = 0; i < logarithms.size(); ++i) {
-    const double cdf = normal_cdf((logarithms[i] - fit.mu) / fit.sigma);
-    const auto rank = static_cast<double>(i);
-    fit.ks_distance = std::max({fit.ks_distance, cdf - rank / count, (rank + 1) / count - cdf});
-  }
-  return fit;
+double normal_cdf(double z) {
+  return 0.5 * std::erfc(-z / std::numbers::sqrt2);
 }
 
-std::vector<double> expected_counts(const LogNormalFit& fit, std::span<const double> edges, std::size_t count) {
-  const auto below = [&](double edge) { return edge > 0 ? normal_cdf((std::log(edge) - fit.mu) / fit.sigma) : 0.0; };
+namespace {
+
+/// Greatest distance between the steps of `ascending` and the normal distribution. The distribution function
+/// rises throughout, so its values at both ends of a stretch bound the distance within: few stretches are
+/// looked into.
+double distance_from_normal(std::span<const double> ascending, double mean, double std) {
+  constexpr std::size_t stretch = 64;
+  const auto count = static_cast<double>(ascending.size());
+  const auto cdf = [&](std::size_t i) { return normal_cdf((ascending[i] - mean) / std); };
+  const auto distance = [&](std::size_t i, double value) {
+    return std::max(value - static_cast<double>(i) / count, static_cast<double>(i + 1) / count - value);
+  };
+  double greatest = 0.0, low = cdf(0);
+  for (std::size_t first = 0; first < ascending.size(); first += stretch) {
+    const std::size_t last = std::min(first + stretch, ascending.size()) - 1;
+    const std::size_t next = std::min(last + 1, ascending.size() - 1);
+    const double high = cdf(next);
+    const double bound =
+        std::max(high - static_cast<double>(first) / count, static_cast<double>(last + 1) / count - low);
+    if (bound > greatest) {
+      for (std::size_t i = first; i <= last; ++i) greatest = std::max(greatest, distance(i, cdf(i)));
+    }
+    low = high;
+  }
+  return greatest;
+}
+
+}  // namespace
+
+std::optional<LogNormalFit> log_normal_fit(std::span<const double> values) {
+  if (values.size() < 2 || std::ranges::any_of(values, [](double value) { return !(value > 0.0); })) {
+    return std::nullopt;
+  }
+  std::vector<double> logarithms = sorted(values);
+  if (logarithms.front() == logarithms.back()) return std::nullopt;
+  for (double& value : logarithms) value = std::log(value);
+  const Moments of_logarithm = moments(logarithms);
+  if (of_logarithm.std == 0.0) return std::nullopt;
+  return LogNormalFit{.mu = of_logarithm.mean,
+                      .sigma = of_logarithm.std,
+                      .ks_distance = distance_from_normal(logarithms, of_logarithm.mean, of_logarithm.std)};
+}
+
+std::vector<double> expected_counts(const LogNormalFit& fit,
+                                    std::span<const double> edges,
+                                    std::size_t count) {
+  const auto below = [&](double edge) {
+    return edge > 0 ? normal_cdf((std::log(edge) - fit.mu) / fit.sigma) : 0.0;
+  };
   std::vector<double> expected;
   for (std::size_t i = 0; i + 1 < edges.size(); ++i) {
     expected.push_back(static_cast<double>(count) * (below(edges[i + 1]) - below(edges[i])));

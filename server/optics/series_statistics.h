@@ -8,8 +8,8 @@
 
 namespace bentlight::optics {
 
-/// Mean, standard deviation (divisor count - 1), skewness m3 / m2^1.5 and kurtosis m4 / m2^2 (biased forms; 3 for a
-/// Gaussian).
+/// Mean, standard deviation (divisor count - 1), skewness m3 / m2^1.5 and kurtosis m4 / m2^2 (biased forms; 3
+/// for a Gaussian).
 struct Moments {
   std::size_t count = 0;
   double mean = 0.0, std = 0.0, skewness = 0.0, kurtosis = 0.0;
@@ -18,18 +18,32 @@ struct Moments {
 /// needs  at least two values, all finite
 Moments moments(std::span<const double> values);
 
+/// The values in ascending order.
+///
+///   needs  no NaN
+///   cost   linear: a radix sort, 1 ms for 100,000 values
+std::vector<double> sorted(std::span<const double> values);
+
 /// Percentiles by linear interpolation between order statistics.
 ///
 ///   needs   at least one value; percents from 0 to 100
 ///   source  Hyndman and Fan, The American Statistician 50 (1996) 361, type 7
 std::vector<double> percentiles(std::span<const double> values, std::span<const double> percents);
 
+/// The same of values that `sorted` gave.
+double percentile_of_sorted(std::span<const double> ascending, double percent);
+
 struct Histogram {
-  std::vector<double> edges;   // [bins + 1], equally spaced from the least to the greatest value
+  std::vector<double> edges;   // [bins + 1], equally spaced
   std::vector<double> counts;  // [bins]; the last bin holds its upper edge too
 };
 
-/// `bins` 0 chooses by the rule of Freedman and Diaconis (Z. Wahrscheinlichkeitstheorie 57 (1981) 453), within 16 to 128.
+/// `bins` 0 chooses a width near that of Freedman and Diaconis, rounded to 1, 2, 2.5 or 5 times a power of
+/// ten, with edges at its multiples and 16 to 128 bins across the values; otherwise so many bins from the
+/// least to the greatest.
+///
+///   needs   at least one value, all finite
+///   source  Freedman and Diaconis, Z. Wahrscheinlichkeitstheorie 57 (1981) 453
 Histogram histogram(std::span<const double> values, std::size_t bins);
 
 struct LogNormalFit {
@@ -41,7 +55,9 @@ struct LogNormalFit {
 std::optional<LogNormalFit> log_normal_fit(std::span<const double> values);
 
 /// What the fit puts between each pair of edges, out of `count` values.
-std::vector<double> expected_counts(const LogNormalFit& fit, std::span<const double> edges, std::size_t count);
+std::vector<double> expected_counts(const LogNormalFit& fit,
+                                    std::span<const double> edges,
+                                    std::size_t count);
 
 double normal_cdf(double z);
 

@@ -11,83 +11,100 @@ namespace {
 
 constexpr std::size_t plane_modes = 3;
 
-// Frames to one matrix product: 32 frames of 128 x 128 and 36 modes fill a second-level cache (tests/bench,
-// index).
-constexpr std::size_t product_frames = 32;
-
-// Below this share of V, the residual as a difference of sums has lost the digits of its floats; it is then
-// computed from the residual itself.
-constexpr double least_share = 1e-3;
-
-/// Mean square of `frame` - sum of c_k Z_k over the modes beyond the plane, from the difference itself.
-double direct_residual(std::span<const float> frame, const ModeBasis& basis, std::span<const double> c) {
-  const auto points = static_cast<Eigen::Index>(frame.size());
-  Eigen::VectorXd left = Eigen::Map<const Eigen::VectorXf>(frame.data(), points).cast<double>();
-  for (std::size_t k = plane_modes; k < basis.count(); ++k) {
-    left -= c[k - plane_modes] * basis.modes().col(static_cast<Eigen::Index>(k));
-  }
-  return left.squaredNorm() / static_cast<double>(points);
-}
-
-/// Mean square of what the modes beyond the plane, with coefficients c, leave of a frame whose mean square is
-/// `all`.
-double residual_of(std::span<const float> frame,
-                   double all,
-                   const ModeBasis& basis,
-                   std::span<const double> c) {
-  double modal = 0.0;
-  for (const double value : c) modal += value * value;
-  return modal < (1.0 - least_share) * all || all == 0.0 ? all - modal : direct_residual(frame, basis, c);
-}
+// Below this share of the mean square, the rest as a difference of sums has lost too many of the digits that
+// the float products hold (about 1e-7 of the whole, so 1e-6 of a tenth).
+constexpr double least_share = 0.1;
 
 }  // namespace
 
-BlockSummarizer::BlockSummarizer(const ModeBasis& basis) : basis_(basis), moments_(basis.points()) {}
+void ModalResidual::residual(const float* frames,
+                             std::span<const double> mean_square,
+                             const Eigen::MatrixXd& coefficients,
+                             std::span<double> residual) {
+  const auto points = static_cast<Eigen::Index>(basis_->points());
+  const auto count = static_cast<Eigen::Index>(mean_square.size());
+  std::array<bool, most_frames> is_short = {};
+  bool any_is_short = false;
+  for (std::size_t f = 0; f < mean_square.size(); ++f) {
+    const double modal = coefficients.col(static_cast<Eigen::Index>(f)).squaredNorm();
+    residual[f] = mean_square[f] - modal;
+    is_short[f] = residual[f] < least_share * mean_square[f];
+    any_is_short |= is_short[f];
+  }
+  if (!any_is_short) return;
+  rest_ = Eigen::Map<const Eigen::MatrixXf>(frames, points, count);
+  rest_.noalias() -=
+      basis_->modes_float().rightCols(coefficients.rows()) * coefficients.leftCols(count).cast<float>();
+  for (std::size_t f = 0; f < mean_square.size(); ++f) {
+    if (!is_short[f]) continue;
+    const std::span<const float> rest(rest_.col(static_cast<Eigen::Index>(f)).data(), basis_->points());
+    residual[f] = square_sum(rest) / static_cast<double>(points);
+  }
+}
+
+BlockSummarizer::BlockSummarizer(const ModeBasis& basis)
+    : basis_(basis), moments_(basis.points()), modal_residual_(basis) {}
 
 BlockSummary BlockSummarizer::summarize(FrameBlock& block) {
-  const std::size_t frames = block.frames.count, modes = basis_.count(), points = block.points;
-  const double scale = 1.0 / static_cast<double>(points);
+  const std::size_t frames = block.frames.count;
   BlockSummary summary{.frames = block.frames,
-                       .coefficients = std::vector<double>(modes * frames, 0.0),
+                       .coefficients = std::vector<double>(basis_.count() * frames, 0.0),
                        .residual = std::vector<double>(frames, 0.0),
                        .tilt_removed = std::vector<double>(frames, 0.0),
                        .finite = block.finite};
-  sums_.resize(3 * product_frames);
-  plane_.resize(3 * product_frames);
-  std::vector<double> higher(modes - plane_modes);
-  for (std::size_t first = 0; first < frames; first += product_frames) {
-    const std::size_t count = std::min(product_frames, frames - first);
-    float* const values = block.frame(first).data();
-    for (std::size_t f = 0; f < count; ++f) {
-      if (!block.finite[first + f]) std::ranges::fill(block.frame(first + f), 0.0F);
-    }
-    plane_sums(values, count, points, basis_.mode_float(2).data(), basis_.mode_float(3).data(), sums_.data());
-    for (std::size_t i = 0; i < 3 * count; ++i) plane_[i] = static_cast<float>(sums_[i] * scale);
-    subtract_plane(values, count, points, basis_.mode_float(2).data(), basis_.mode_float(3).data(), nullptr,
-                   plane_.data(), summary.tilt_removed.data() + first);
-
-    const Eigen::Map<const Eigen::MatrixXf> columns(values, static_cast<Eigen::Index>(points),
-                                                    static_cast<Eigen::Index>(count));
-    products_.noalias() = basis_.modes_float().transpose() * columns;
-    for (std::size_t f = 0; f < count; ++f) {
-      const std::size_t frame = first + f;
-      if (!block.finite[frame]) continue;
-      const auto column = static_cast<Eigen::Index>(f);
-      summary.tilt_removed[frame] *= scale;
-      for (std::size_t k = 0; k < modes; ++k) {
-        const double product = static_cast<double>(products_(static_cast<Eigen::Index>(k), column)) * scale;
-        // What rounding left of the plane belongs to it; piston holds the shift.
-        const double plane = k < plane_modes ? static_cast<double>(plane_[3 * f + k]) : 0.0;
-        summary.coefficients[k * frames + frame] = product + plane + (k == 0 ? block.shift_m[frame] : 0.0);
-        if (k >= plane_modes) higher[k - plane_modes] = product;
-      }
-      summary.residual[frame] = residual_of(block.frame(frame), summary.tilt_removed[frame], basis_, higher);
-    }
+  for (std::size_t first = 0; first < frames; first += ModalResidual::most_frames) {
+    summarize_group(block, {first, std::min(ModalResidual::most_frames, frames - first)}, summary);
   }
   std::ranges::fill(block.shift_m, 0.0);
   moments_.add(block);
   summary.maps = moments_.finish();
   return summary;
+}
+
+void BlockSummarizer::summarize_group(FrameBlock& block, FrameRange group, BlockSummary& summary) {
+  const double scale = 1.0 / static_cast<double>(block.points);
+  const auto frames = block.frames.count, modes = basis_.count();
+  remove_plane(block, group, summary);
+  const Eigen::Map<const Eigen::MatrixXf> columns(block.frame(group.first).data(),
+                                                  static_cast<Eigen::Index>(block.points),
+                                                  static_cast<Eigen::Index>(group.count));
+  products_.noalias() = basis_.modes_float().transpose() * columns;
+  coefficients_ = products_.bottomRows(static_cast<Eigen::Index>(modes - plane_modes)).cast<double>() * scale;
+  modal_residual_.residual(columns.data(), {summary.tilt_removed.data() + group.first, group.count},
+                           coefficients_, {summary.residual.data() + group.first, group.count});
+  for (std::size_t f = 0; f < group.count; ++f) {
+    const std::size_t frame = group.first + f;
+    if (!block.finite[frame]) continue;
+    for (std::size_t k = 0; k < modes; ++k) {
+      const auto product =
+          static_cast<double>(products_(static_cast<Eigen::Index>(k), static_cast<Eigen::Index>(f)));
+      // What rounding left of the plane belongs to it; piston holds the shift.
+      const double plane = k < plane_modes ? static_cast<double>(plane_[plane_modes * f + k]) : 0.0;
+      summary.coefficients[k * frames + frame] =
+          product * scale + plane + (k == 0 ? block.shift_m[frame] : 0.0);
+    }
+  }
+}
+
+void BlockSummarizer::remove_plane(FrameBlock& block, FrameRange group, BlockSummary& summary) {
+  const double scale = 1.0 / static_cast<double>(block.points);
+  const float* const tip = basis_.mode_float(2).data();
+  const float* const tilt = basis_.mode_float(3).data();
+  plane_.resize(plane_modes * ModalResidual::most_frames);
+  for (std::size_t f = 0; f < group.count; f += frames_at_once) {
+    // A few frames at a time, so that the second touch finds them in cache.
+    const std::size_t first = group.first + f, count = std::min(frames_at_once, group.count - f);
+    for (std::size_t i = first; i < first + count; ++i) {
+      if (!block.finite[i]) std::ranges::fill(block.frame(i), 0.0F);
+    }
+    std::array<double, plane_modes* frames_at_once> sums = {};
+    float* const plane = plane_.data() + plane_modes * f;
+    plane_sums(block.frame(first).data(), count, block.points, tip, tilt, sums.data());
+    for (std::size_t i = 0; i < plane_modes * count; ++i) plane[i] = static_cast<float>(sums[i] * scale);
+    double* const squares = summary.tilt_removed.data() + first;
+    subtract_plane(block.frame(first).data(), count, block.points, tip, tilt, nullptr, plane, squares);
+    for (std::size_t i = 0; i < count; ++i) squares[i] *= scale;
+  }
 }
 
 Expected<BlockFluctuation> BlockFluctuation::make(const Aperture& aperture,
@@ -101,18 +118,24 @@ Expected<BlockFluctuation> BlockFluctuation::make(const Aperture& aperture,
 }
 
 BlockFluctuation::Values BlockFluctuation::add(FrameBlock& block, std::span<const double> coefficients) {
-  const std::size_t frames = block.frames.count, modes = basis_->count();
+  const std::size_t frames = block.frames.count, higher = mean_coefficients_.size() - plane_modes;
   preparation_.prepare(block, scratch_);
-  Values values{.residual = std::vector<double>(frames, 0.0),
-                .tilt_removed = std::vector<double>(frames, 0.0)};
-  std::vector<double> higher(modes - plane_modes);
+  Values values{.residual = std::vector<double>(frames, 0.0), .tilt_removed = scratch_.mean_square};
   for (std::size_t f = 0; f < frames; ++f) {
-    if (!block.finite[f]) continue;
-    for (std::size_t k = plane_modes; k < modes; ++k) {
-      higher[k - plane_modes] = coefficients[k * frames + f] - mean_coefficients_[k];
+    if (!block.finite[f]) values.tilt_removed[f] = 0.0;
+  }
+  for (std::size_t first = 0; first < frames; first += ModalResidual::most_frames) {
+    const std::size_t count = std::min(ModalResidual::most_frames, frames - first);
+    coefficients_.setZero(static_cast<Eigen::Index>(higher), static_cast<Eigen::Index>(count));
+    for (std::size_t f = 0; f < count; ++f) {
+      if (!block.finite[first + f]) continue;
+      for (std::size_t k = 0; k < higher; ++k) {
+        coefficients_(static_cast<Eigen::Index>(k), static_cast<Eigen::Index>(f)) =
+            coefficients[(k + plane_modes) * frames + first + f] - mean_coefficients_[k + plane_modes];
+      }
     }
-    values.tilt_removed[f] = scratch_.mean_square[f];
-    values.residual[f] = residual_of(block.frame(f), scratch_.mean_square[f], *basis_, higher);
+    modal_residual_.residual(block.frame(first).data(), {values.tilt_removed.data() + first, count},
+                             coefficients_, {values.residual.data() + first, count});
   }
   return values;
 }

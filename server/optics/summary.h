@@ -8,8 +8,8 @@
 //   mean square, `mean` kept     = residual(t) + sum over summary modes k not in S of c_k(t)^2
 //   mean square, `mean` removed  = residual_fluctuation(t) + sum over k not in S of (c_k(t) - mean c_k)^2
 //
-// Sums are put together in double and never by taking a part from a large total: tilt can be a thousand times
-// what is left without it.
+// Sums are put together in double and never by taking a small part from a large total: tilt can be a thousand
+// times what is left without it.
 #pragma once
 
 #include <Eigen/Core>
@@ -38,6 +38,31 @@ struct BlockSummary {
   MomentMaps maps;                   // of V, over the block's finite frames
 };
 
+/// The mean squares that given modes leave of frames without piston, tip and tilt.
+///
+/// Usually a difference of sums. Where the modes carry most of a frame, that would keep few digits of the
+/// rest; the rest itself is then computed.
+///
+///   threads  one at a time
+class ModalResidual {
+ public:
+  /// `basis` holds the summary modes (at least three) and outlives this object.
+  explicit ModalResidual(const ModeBasis& basis) : basis_(&basis) {}
+
+  /// Most frames that one call takes: with 36 modes of 128 x 128 points they fill a second-level cache.
+  static constexpr std::size_t most_frames = 32;
+
+  ///   shapes  frames [count][points]; mean_square, residual [count]; coefficients [modes beyond tilt, count]
+  void residual(const float* frames,
+                std::span<const double> mean_square,
+                const Eigen::MatrixXd& coefficients,
+                std::span<double> residual);
+
+ private:
+  const ModeBasis* basis_;
+  Eigen::MatrixXf rest_;  // [points, count]
+};
+
 /// First pass: everything but what needs the mean of the whole record.
 ///
 ///   threads  one at a time; one object per lane
@@ -50,11 +75,15 @@ class BlockSummarizer {
   BlockSummary summarize(FrameBlock& block);
 
  private:
+  void summarize_group(FrameBlock& block, FrameRange group, BlockSummary& summary);
+  void remove_plane(FrameBlock& block, FrameRange group, BlockSummary& summary);
+
   const ModeBasis& basis_;
   MomentAccumulator moments_;
-  std::vector<double> sums_;
-  std::vector<float> plane_;
-  Eigen::MatrixXf products_;
+  ModalResidual modal_residual_;
+  std::vector<float> plane_;      // [group][3]
+  Eigen::MatrixXf products_;      // [modes, group]
+  Eigen::MatrixXd coefficients_;  // [modes beyond tilt, group]
 };
 
 /// Second pass: mean squares about the steady lensing.
@@ -67,7 +96,9 @@ class BlockFluctuation {
     std::vector<double> tilt_removed;  // [frames.count]; mean square of V - M
   };
 
-  /// `steady_lensing` is M, `mean_coefficients` [modes]. errors  degenerate_aperture
+  /// `steady_lensing` is M, `mean_coefficients` [modes]; `basis` outlives this object.
+  ///
+  ///   errors  degenerate_aperture
   static Expected<BlockFluctuation> make(const Aperture& aperture,
                                          const ModeBasis& basis,
                                          std::span<const double> steady_lensing,
@@ -81,14 +112,15 @@ class BlockFluctuation {
   BlockFluctuation(const ModeBasis& basis,
                    FramePreparation preparation,
                    std::vector<double> mean_coefficients)
-      : basis_(&basis),
-        preparation_(std::move(preparation)),
+      : preparation_(std::move(preparation)),
+        modal_residual_(basis),
         mean_coefficients_(std::move(mean_coefficients)) {}
 
-  const ModeBasis* basis_;
   FramePreparation preparation_;
   FramePreparation::Scratch scratch_;
-  std::vector<double> mean_coefficients_;
+  ModalResidual modal_residual_;
+  std::vector<double> mean_coefficients_;  // [modes]
+  Eigen::MatrixXd coefficients_;           // [modes beyond tilt, group]
 };
 
 /// Whether a summary of `modes` modes can give each frame's OPD_rms after `removal`.

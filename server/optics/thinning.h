@@ -9,8 +9,8 @@ namespace bentlight::optics {
 
 /// Least, greatest and mean value of each bin. A bin without finite values holds NaN.
 struct Thinned {
-  std::vector<double> low, high, mean;     // [bins]
-  std::vector<std::size_t> first, count;   // [bins]; the values that a bin covers, NaN included
+  std::vector<double> low, high, mean;    // [bins]
+  std::vector<std::size_t> first, count;  // [bins]; the values that a bin covers, NaN included
 };
 
 /// At most `bins` bins of equal length (one more or less); fewer values than bins give each its own.

@@ -1,13 +1,12 @@
 #include "base/file.h"
 
 #include <fcntl.h>
+#include <fmt/format.h>
 #include <sys/stat.h>
 #include <unistd.h>
 
 #include <cerrno>
 #include <cstdio>
-
-#include <fmt/format.h>
 
 namespace bentlight {
 
@@ -47,9 +46,10 @@ class PosixReadFile final : public ReadFile {
       if (got < 0 && errno == EINTR) continue;
       if (got < 0) return system_failure(errno, "reading", path_);
       if (got == 0) {
-        return failure(ErrorCode::file_changed,
-                       fmt::format("the file ends at byte {}, {} bytes short of what was indexed", offset, out.size()),
-                       path_);
+        return failure(
+            ErrorCode::file_changed,
+            fmt::format("the file ends at byte {}, {} bytes short of what was indexed", offset, out.size()),
+            path_);
       }
       out = out.subspan(static_cast<std::size_t>(got));
       offset += static_cast<std::uint64_t>(got);
@@ -70,18 +70,45 @@ class PosixReadFile final : public ReadFile {
   std::string path_;
 };
 
-Expected<void> write_and_sync(const std::filesystem::path& path, int flags, std::span<const std::byte> bytes) {
-  Descriptor file(::open(path.c_str(), O_WRONLY | O_CREAT | O_CLOEXEC | flags, 0640));
-  if (file.value() < 0) return system_failure(errno, "creating", path.string());
-  while (!bytes.empty()) {
-    const ssize_t put = ::write(file.value(), bytes.data(), bytes.size());
-    if (put < 0 && errno == EINTR) continue;
-    if (put < 0) return system_failure(errno, "writing", path.string());
-    bytes = bytes.subspan(static_cast<std::size_t>(put));
+class PosixNewFile final : public NewFile {
+ public:
+  static Expected<std::unique_ptr<PosixNewFile>> make(const std::filesystem::path& path, int flags) {
+    Descriptor file(::open(path.c_str(), O_WRONLY | O_CREAT | O_CLOEXEC | flags, 0640));
+    if (file.value() < 0) return system_failure(errno, "creating", path.string());
+    return std::unique_ptr<PosixNewFile>(new PosixNewFile(std::move(file), path.string()));
   }
-  if (::fsync(file.value()) != 0) return system_failure(errno, "syncing", path.string());
-  if (!file.close()) return system_failure(errno, "closing", path.string());
-  return {};
+
+  Expected<void> append(std::span<const std::byte> bytes) override {
+    while (!bytes.empty()) {
+      const ssize_t put = ::write(descriptor_.value(), bytes.data(), bytes.size());
+      if (put < 0 && errno == EINTR) continue;
+      if (put < 0) return system_failure(errno, "writing", path_);
+      bytes = bytes.subspan(static_cast<std::size_t>(put));
+    }
+    return {};
+  }
+
+  Expected<void> finish() override {
+    if (::fsync(descriptor_.value()) != 0) return system_failure(errno, "syncing", path_);
+    if (!descriptor_.close()) return system_failure(errno, "closing", path_);
+    return {};
+  }
+
+ private:
+  PosixNewFile(Descriptor descriptor, std::string path)
+      : descriptor_(std::move(descriptor)), path_(std::move(path)) {}
+
+  Descriptor descriptor_;
+  const std::string path_;
+};
+
+Expected<void> write_and_sync(const std::filesystem::path& path,
+                              int flags,
+                              std::span<const std::byte> bytes) {
+  const auto file = PosixNewFile::make(path, flags);
+  if (!file) return failure(file);
+  if (auto written = (*file)->append(bytes); !written) return written;
+  return (*file)->finish();
 }
 
 Expected<void> sync_folder(const std::filesystem::path& path) {
@@ -109,9 +136,11 @@ Expected<FileStamp> PosixFileSystem::stamp(const std::filesystem::path& path) co
   return stamp_of(status);
 }
 
-Expected<void> PosixFileSystem::replace(const std::filesystem::path& path, std::span<const std::byte> bytes) const {
-  // The process number keeps two writers from sharing one file aside; the last rename wins, whole.
-  const auto aside = std::filesystem::path(path).concat(fmt::format(".{}.aside", ::getpid()));
+Expected<void> PosixFileSystem::replace(const std::filesystem::path& path,
+                                        std::span<const std::byte> bytes) const {
+  // The thread's number, which no other thread of the machine has, keeps two writers from sharing one file
+  // aside; the last rename wins, whole.
+  const auto aside = std::filesystem::path(path).concat(fmt::format(".{}.aside", ::gettid()));
   if (auto written = write_and_sync(aside, O_TRUNC, bytes); !written) {
     ::unlink(aside.c_str());
     return written;
@@ -124,8 +153,13 @@ Expected<void> PosixFileSystem::replace(const std::filesystem::path& path, std::
   return sync_folder(path.parent_path());
 }
 
-Expected<void> PosixFileSystem::create(const std::filesystem::path& path, std::span<const std::byte> bytes) const {
+Expected<void> PosixFileSystem::create(const std::filesystem::path& path,
+                                       std::span<const std::byte> bytes) const {
   return write_and_sync(path, O_EXCL, bytes);
+}
+
+Expected<std::unique_ptr<NewFile>> PosixFileSystem::start(const std::filesystem::path& path) const {
+  return PosixNewFile::make(path, O_EXCL);
 }
 
 Expected<void> PosixFileSystem::publish_folder(const std::filesystem::path& from,
@@ -136,13 +170,16 @@ Expected<void> PosixFileSystem::publish_folder(const std::filesystem::path& from
   return sync_folder(to.parent_path());
 }
 
-Expected<std::string> read_whole(const FileSystem& files, const std::filesystem::path& path, std::size_t limit_bytes) {
+Expected<std::string> read_whole(const FileSystem& files,
+                                 const std::filesystem::path& path,
+                                 std::size_t limit_bytes) {
   const auto file = files.open(path);
   if (!file) return failure(file);
   const auto stamp = (*file)->stamp();
   if (!stamp) return failure(stamp);
   if (stamp->size_bytes > limit_bytes) {
-    return failure(ErrorCode::too_large, fmt::format("{} bytes; at most {} are read", stamp->size_bytes, limit_bytes),
+    return failure(ErrorCode::too_large,
+                   fmt::format("{} bytes; at most {} are read", stamp->size_bytes, limit_bytes),
                    path.string());
   }
   std::string text(stamp->size_bytes, '\0');

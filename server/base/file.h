@@ -37,6 +37,19 @@ class ReadFile {
   virtual int descriptor() const = 0;
 };
 
+/// A new file that is filled bit by bit, in a folder that is not visible yet.
+///
+///   threads  one at a time
+class NewFile {
+ public:
+  virtual ~NewFile() = default;
+
+  /// errors  disk_full, io_error
+  virtual Expected<void> append(std::span<const std::byte> bytes) = 0;
+  /// Syncs and closes the file; without this nothing is promised about it.
+  virtual Expected<void> finish() = 0;
+};
+
 /// The way to the disk, passed in so that a test can cut a read short or fill the disk.
 ///
 ///   threads  safe from any thread
@@ -48,17 +61,23 @@ class FileSystem {
   virtual Expected<std::unique_ptr<ReadFile>> open(const std::filesystem::path& path) const = 0;
   virtual Expected<FileStamp> stamp(const std::filesystem::path& path) const = 0;
 
-  /// Makes `path` hold exactly `bytes`: written aside, synced, renamed, folder synced. After a crash the file is
-  /// the old one or the new one.
+  /// Makes `path` hold exactly `bytes`: written aside, synced, renamed, folder synced. After a crash the file
+  /// is the old one or the new one.
   ///
   ///   errors  disk_full, permission_denied, io_error; the old file is untouched then
-  virtual Expected<void> replace(const std::filesystem::path& path, std::span<const std::byte> bytes) const = 0;
+  virtual Expected<void> replace(const std::filesystem::path& path,
+                                 std::span<const std::byte> bytes) const = 0;
 
   /// Creates `path` with `bytes` and syncs it; for files in a folder that is not visible yet.
-  virtual Expected<void> create(const std::filesystem::path& path, std::span<const std::byte> bytes) const = 0;
+  virtual Expected<void> create(const std::filesystem::path& path,
+                                std::span<const std::byte> bytes) const = 0;
+
+  /// The same for a file that is too long to be held at once.
+  virtual Expected<std::unique_ptr<NewFile>> start(const std::filesystem::path& path) const = 0;
 
   /// Gives the folder `from` its final name `to` (which must not exist) and syncs both parents.
-  virtual Expected<void> publish_folder(const std::filesystem::path& from, const std::filesystem::path& to) const = 0;
+  virtual Expected<void> publish_folder(const std::filesystem::path& from,
+                                        const std::filesystem::path& to) const = 0;
 };
 
 /// The operating system's files.
@@ -68,11 +87,15 @@ class PosixFileSystem final : public FileSystem {
   Expected<FileStamp> stamp(const std::filesystem::path& path) const override;
   Expected<void> replace(const std::filesystem::path& path, std::span<const std::byte> bytes) const override;
   Expected<void> create(const std::filesystem::path& path, std::span<const std::byte> bytes) const override;
-  Expected<void> publish_folder(const std::filesystem::path& from, const std::filesystem::path& to) const override;
+  Expected<std::unique_ptr<NewFile>> start(const std::filesystem::path& path) const override;
+  Expected<void> publish_folder(const std::filesystem::path& from,
+                                const std::filesystem::path& to) const override;
 };
 
 /// The whole of a small file. errors  as open; too_large beyond `limit_bytes`
-Expected<std::string> read_whole(const FileSystem& files, const std::filesystem::path& path, std::size_t limit_bytes);
+Expected<std::string> read_whole(const FileSystem& files,
+                                 const std::filesystem::path& path,
+                                 std::size_t limit_bytes);
 
 inline std::span<const std::byte> as_bytes(std::string_view text) {
   return {reinterpret_cast<const std::byte*>(text.data()), text.size()};

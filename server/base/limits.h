@@ -49,4 +49,7 @@ inline constexpr std::size_t summary_block_frames = 128;
 // frames of 128 x 128 points is read and inflated once.
 inline constexpr std::size_t index_memory_bytes = 1 * gibi;
 
+// The modes of a summary on their points. All 36 fit up to 1000 x 1000 points; a larger grid keeps fewer.
+inline constexpr std::size_t summary_basis_bytes = 512 * mebi;
+
 }  // namespace bentlight::limits

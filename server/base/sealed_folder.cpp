@@ -3,6 +3,9 @@
 #include <fmt/format.h>
 
 #include <algorithm>
+#include <charconv>
+#include <optional>
+#include <stdexcept>
 
 #include "base/digest.h"
 #include "base/limits.h"
@@ -13,7 +16,8 @@ namespace bentlight {
 namespace {
 
 constexpr std::string_view manifest_name = "manifest.txt";
-constexpr std::string_view first_line = "bentlight sealed folder 1";
+constexpr std::string_view kind = "bentlight sealed folder ";
+constexpr long long version = 1;
 constexpr std::size_t manifest_bytes = 64 * limits::mebi;
 
 /// Checksums of the pieces of a file, read piece by piece.
@@ -29,6 +33,35 @@ Expected<std::vector<std::uint64_t>> piece_sums(const ReadFile& file, std::uint6
   return sums;
 }
 
+template <class Number>
+std::optional<Number> parsed(std::string_view text, int base) {
+  Number value{};
+  const auto [end, error] = std::from_chars(text.data(), text.data() + text.size(), value, base);
+  if (error != std::errc() || end != text.data() + text.size()) return std::nullopt;
+  return value;
+}
+
+/// One line of a manifest.
+struct Entry {
+  std::string name;
+  std::uint64_t bytes = 0;
+  std::vector<std::uint64_t> pieces;
+};
+
+std::optional<Entry> parse_entry(std::string_view line) {
+  const auto words = split(line, ' ');
+  const auto bytes = words.size() < 2 ? std::nullopt : parsed<std::uint64_t>(words[1], 10);
+  if (!bytes) return std::nullopt;
+  Entry entry{.name = words[0], .bytes = *bytes};
+  for (std::size_t w = 2; w < words.size(); ++w) {
+    const auto sum = parsed<std::uint64_t>(words[w], 16);
+    if (!sum) return std::nullopt;
+    entry.pieces.push_back(*sum);
+  }
+  if (entry.pieces.size() != (entry.bytes + sealed_piece_bytes - 1) / sealed_piece_bytes) return std::nullopt;
+  return entry;
+}
+
 }  // namespace
 
 // The manifest is text, one file a line: name, bytes, and the checksums of its pieces in hexadecimal. Its
@@ -41,8 +74,11 @@ Expected<void> SealedFolderWriter::seal() const {
   }
   if (error) return system_failure(error.value(), "reading the folder", folder_.string());
   std::ranges::sort(names);
-  std::string manifest = fmt::format("{}\n", first_line);
+  std::string manifest = fmt::format("{}{}\n", kind, version);
   for (const std::string& name : names) {
+    if (name.find_first_of(" \n") != std::string::npos) {
+      throw std::invalid_argument("SealedFolderWriter: a manifest cannot hold the name " + name);
+    }
     const auto file = files_.open(folder_ / name);
     if (!file) return failure(file);
     const auto stamp = (*file)->stamp();
@@ -62,32 +98,44 @@ tl::unexpected<Error> SealedFolder::damaged(const std::string& name, std::string
                  folder_.filename().string());
 }
 
-Expected<std::shared_ptr<const SealedFolder>> SealedFolder::open(const FileSystem& files,
-                                                                 const std::filesystem::path& folder) {
-  const std::shared_ptr<SealedFolder> sealed(new SealedFolder(folder));
-  const std::string manifest_file(manifest_name);
-  const auto text = read_whole(files, folder / manifest_name, manifest_bytes);
-  if (!text) return sealed->damaged(manifest_file, text.error().text);
+Expected<std::vector<std::string>> SealedFolder::manifest_lines(const FileSystem& files) const {
+  const std::string manifest(manifest_name);
+  const auto text = read_whole(files, folder_ / manifest, manifest_bytes);
+  if (!text) return damaged(manifest, text.error().text);
   auto lines = split(*text, '\n');
-  if (lines.size() < 3 || lines.front() != first_line)
-    return sealed->damaged(manifest_file, "of another version, or torn");
+  const auto made_by =
+      lines.front().starts_with(kind) ? parse_whole_number(lines.front().substr(kind.size())) : std::nullopt;
+  if (made_by && *made_by > version) {
+    return failure(ErrorCode::newer_state,
+                   fmt::format("{} has version {}, this program knows {}; use the newer program", manifest,
+                               *made_by, version),
+                   folder_.filename().string());
+  }
+  if (made_by != version || lines.size() < 3) return damaged(manifest, "not a manifest, or torn");
   const std::string& sum = lines[lines.size() - 2];
   const std::size_t above = text->size() - sum.size() - 1;
   if (sum != fmt::format("{:x}", checksum(as_bytes(std::string_view(*text).substr(0, above))))) {
-    return sealed->damaged(manifest_file, "altered or torn");
+    return damaged(manifest, "altered or torn");
   }
-  for (std::size_t i = 1; i + 2 < lines.size(); ++i) {
-    const auto words = split(lines[i], ' ');
-    const std::string& name = words.front();
-    File entry{.bytes = std::stoull(words.at(1))};
-    for (std::size_t w = 2; w < words.size(); ++w) entry.pieces.push_back(std::stoull(words[w], nullptr, 16));
-    auto file = files.open(folder / name);
-    if (!file) return sealed->damaged(name, file.error().text);
+  return std::vector(lines.begin() + 1, lines.end() - 2);
+}
+
+Expected<std::shared_ptr<const SealedFolder>> SealedFolder::open(const FileSystem& files,
+                                                                 const std::filesystem::path& folder) {
+  const std::shared_ptr<SealedFolder> sealed(new SealedFolder(folder));
+  const auto lines = sealed->manifest_lines(files);
+  if (!lines) return failure(lines);
+  for (const std::string& line : *lines) {
+    auto entry = parse_entry(line);
+    if (!entry) return sealed->damaged(std::string(manifest_name), "a line that cannot be understood");
+    auto file = files.open(folder / entry->name);
+    if (!file) return sealed->damaged(entry->name, file.error().text);
     const auto stamp = (*file)->stamp();
-    if (!stamp || stamp->size_bytes != entry.bytes)
-      return sealed->damaged(name, "of another size than when it was sealed");
-    entry.file = std::move(*file);
-    sealed->files_.emplace(name, std::move(entry));
+    if (!stamp || stamp->size_bytes != entry->bytes) {
+      return sealed->damaged(entry->name, "of another size than when it was sealed");
+    }
+    sealed->files_.emplace(std::move(entry->name),
+                           File{std::move(*file), entry->bytes, std::move(entry->pieces)});
   }
   return sealed;
 }
@@ -109,7 +157,9 @@ Expected<void> SealedFolder::read(const std::string& name,
   while (!out.empty()) {
     const std::uint64_t number = offset / sealed_piece_bytes, start = number * sealed_piece_bytes;
     piece.resize(static_cast<std::size_t>(std::min<std::uint64_t>(sealed_piece_bytes, file.bytes - start)));
-    if (auto read = file.file->read_at(start, piece); !read) return damaged(name, read.error().text);
+    if (auto read = file.file->read_at(start, piece); !read) {
+      return read.error().code == ErrorCode::file_changed ? damaged(name, "cut short") : read;
+    }
     if (checksum(piece) != file.pieces[number]) return damaged(name, "altered or torn");
     const auto from = static_cast<std::size_t>(offset - start);
     const std::size_t count = std::min(out.size(), piece.size() - from);

@@ -32,6 +32,7 @@ class SealedFolderWriter {
   /// Writes the manifest over all files that lie in the folder, whoever put them there.
   ///
   ///   errors  io_error, disk_full
+  ///   throws  std::invalid_argument for a file whose name holds a blank
   Expected<void> seal() const;
 
  private:
@@ -46,7 +47,8 @@ class SealedFolderWriter {
 class SealedFolder {
  public:
   /// errors  damaged_state: no manifest, or one that cannot be understood, or a file missing or of another
-  /// size
+  /// size;
+  ///         newer_state: sealed by a program of a later version
   static Expected<std::shared_ptr<const SealedFolder>> open(const FileSystem& files,
                                                             const std::filesystem::path& folder);
 
@@ -70,6 +72,7 @@ class SealedFolder {
   };
   explicit SealedFolder(std::filesystem::path folder) : folder_(std::move(folder)) {}
   tl::unexpected<Error> damaged(const std::string& name, std::string_view why) const;
+  Expected<std::vector<std::string>> manifest_lines(const FileSystem& files) const;
 
   const std::filesystem::path folder_;
   std::map<std::string, File> files_;

@@ -36,6 +36,7 @@ namespace {
 
 template <class Number>
 std::optional<Number> parse_whole(std::string_view text) {
+  if (text.starts_with("+-")) return std::nullopt;
   if (text.starts_with('+')) text.remove_prefix(1);
   Number value{};
   const auto [end, error] = std::from_chars(text.data(), text.data() + text.size(), value);

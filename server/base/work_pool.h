@@ -46,11 +46,12 @@ class WorkPool {
  private:
   void work();
 
-  std::vector<std::jthread> workers_;
   std::mutex mutex_;  // guards the members below
   std::condition_variable ready_;
   std::deque<std::function<void()>> tasks_;
   bool closing_ = false;
+
+  std::vector<std::jthread> workers_;  // last, so that they end before what they use
 };
 
 }  // namespace bentlight

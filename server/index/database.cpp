@@ -138,6 +138,10 @@ Expected<void> Connection::execute(const std::string& sql) {
   return {};
 }
 
+std::int64_t Connection::changed_rows() const {
+  return sqlite3_total_changes64(database_);
+}
+
 Expected<Transaction> Transaction::begin(Connection& connection) {
   if (auto begun = connection.execute("BEGIN IMMEDIATE"); !begun) return failure(begun);
   return Transaction(connection);
@@ -154,27 +158,31 @@ Expected<void> Transaction::commit() {
   return committed;
 }
 
-Expected<void> migrate(Connection& connection) {
-  int version = 0;
-  {
-    auto asked = connection.query("PRAGMA user_version");
-    if (!asked) return failure(asked);
-    if (const auto row = asked->step(); !row) return failure(row);
-    version = static_cast<int>(asked->whole(0));
-  }
-  if (version > migrations().back().version) {
+Expected<int> version_of(Connection& connection, std::span<const Migration> known) {
+  auto asked = connection.query("PRAGMA user_version");
+  if (!asked) return failure(asked);
+  if (const auto row = asked->step(); !row) return failure(row);
+  const auto version = static_cast<int>(asked->whole(0));
+  if (version > known.back().version) {
     return failure(ErrorCode::newer_state,
                    fmt::format("the index has version {}, this program knows {}; use the newer program",
-                               version, migrations().back().version),
+                               version, known.back().version),
                    "index.sqlite");
   }
-  for (const Migration& migration : migrations()) {
-    if (migration.version <= version) continue;
+  return version;
+}
+
+Expected<void> migrate(Connection& connection, std::span<const Migration> known) {
+  const auto version = version_of(connection, known);
+  if (!version) return failure(version);
+  for (const Migration& migration : known) {
+    if (migration.version <= *version) continue;
     auto transaction = Transaction::begin(connection);
     if (!transaction) return failure(transaction);
     if (auto done = connection.execute(std::string(migration.sql)); !done) return done;
-    if (auto noted = connection.execute(fmt::format("PRAGMA user_version = {}", migration.version)); !noted)
+    if (auto noted = connection.execute(fmt::format("PRAGMA user_version = {}", migration.version)); !noted) {
       return noted;
+    }
     if (auto committed = transaction->commit(); !committed) return committed;
   }
   return {};

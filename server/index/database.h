@@ -71,6 +71,9 @@ class Connection {
   Expected<Query> query(std::string_view sql);
   Expected<void> execute(const std::string& sql);
 
+  /// Rows inserted, changed or deleted since the connection was opened.
+  std::int64_t changed_rows() const;
+
  private:
   explicit Connection(sqlite3* database) : database_(database) {}
   sqlite3* database_;
@@ -92,7 +95,14 @@ class Transaction {
   Connection* connection_;
 };
 
-/// Applies the migrations that the index has not seen. errors  newer_state, io_error
-Expected<void> migrate(Connection& connection);
+/// The last migration that the index has seen; 0 for an empty one.
+///
+///   errors  newer_state when it is beyond those of `known`
+Expected<int> version_of(Connection& connection, std::span<const Migration> known);
+
+/// Applies those of `known` that the index has not seen, each in a transaction of its own.
+///
+///   errors  newer_state, io_error, disk_full
+Expected<void> migrate(Connection& connection, std::span<const Migration> known);
 
 }  // namespace bentlight::index

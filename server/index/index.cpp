@@ -19,14 +19,13 @@ namespace fs = std::filesystem;
 
 namespace {
 
-constexpr std::string_view view_columns =
-    "id, path, dataset, campaign, campaign_name, run, run_name, source, note, azimuth_deg, elevation_deg, "
-    "aperture_diameter_m, reference_length_m, mach, velocity_m_s, density_kg_m3, temperature_k, "
-    "wavelength_m, "
-    "gladstone_dale_m3_kg, frames, rows, columns, points, finite_frames, frame_rate_hz, duration_s, start_s, "
-    "size_bytes, "
-    "mtime_ns, inode, metadata_digest, folder, state, indexed_at_ms, checks, opd_rms_mean_m, "
-    "opd_rms_overall_m";
+constexpr std::string_view view_columns = R"(
+id, path, dataset, campaign, campaign_name, run, run_name, source, note,
+azimuth_deg, elevation_deg, aperture_diameter_m, reference_length_m, mach,
+velocity_m_s, density_kg_m3, temperature_k, wavelength_m, gladstone_dale_m3_kg,
+frames, rows, columns, points, finite_frames, frame_rate_hz, duration_s, start_s,
+size_bytes, mtime_ns, inode, metadata_digest, folder, state, indexed_at_ms, checks,
+opd_rms_mean_m, opd_rms_overall_m)";
 constexpr int view_column_count = 37;
 
 constexpr std::array range_columns = {
@@ -142,19 +141,44 @@ Expected<bool> exists(Connection& connection, const std::string& sql, const std:
   return found->has_value();
 }
 
-std::string slug_or(std::string_view name, std::string_view otherwise) {
-  std::string made = slug(name);
-  return made.empty() ? std::string(otherwise) : made;
+/// The first of `wanted`, `otherwise`, otherwise-2, otherwise-3 … that `is_used` does not hold for.
+Expected<std::string> free_id(const std::string& wanted,
+                              const std::string& otherwise,
+                              const std::function<Expected<bool>(const std::string&)>& is_used) {
+  std::string id = wanted;
+  for (int number = wanted == otherwise ? 2 : 1;; ++number) {
+    const auto used = is_used(id);
+    if (!used) return failure(used);
+    if (!*used) return id;
+    id = number == 1 ? otherwise : fmt::format("{}-{}", otherwise, number);
+  }
 }
 
-/// Gives a view that the index does not know its ids.
+/// A name made fit for an address; a name without any fit letter becomes "unnamed", and the number after it
+/// tells it from others.
+std::string id_of_name(std::string_view name) {
+  std::string made = slug(name);
+  return made.empty() ? "unnamed" : made;
+}
+
+/// Gives a view its ids. Names that differ have ids that differ, even when they look alike in an address.
 Expected<void> name_view(Connection& connection, ViewRecord& view) {
-  view.campaign = slug_or(view.campaign_name, "unnamed");
-  view.run = slug_or(view.run_name, "unnamed");
-  const auto taken = exists(connection, "SELECT 1 FROM view WHERE run = ? AND campaign <> ? LIMIT 1",
-                            {view.run, view.campaign});
-  if (!taken) return failure(taken);
-  if (*taken) view.run = view.campaign + "-" + view.run;
+  // The view's own row does not count: it is about to be replaced.
+  const std::string others = " AND NOT (path = ? AND dataset = ?) LIMIT 1";
+  const std::string campaign = id_of_name(view.campaign_name), run = id_of_name(view.run_name);
+  auto id = free_id(campaign, campaign, [&](const std::string& candidate) {
+    return exists(connection, "SELECT 1 FROM view WHERE campaign = ? AND campaign_name <> ?" + others,
+                  {candidate, view.campaign_name, view.path, view.dataset});
+  });
+  if (!id) return failure(id);
+  view.campaign = *id;
+  id = free_id(run, view.campaign + "-" + run, [&](const std::string& candidate) {
+    return exists(connection,
+                  "SELECT 1 FROM view WHERE run = ? AND (campaign <> ? OR run_name <> ?)" + others,
+                  {candidate, view.campaign, view.run_name, view.path, view.dataset});
+  });
+  if (!id) return failure(id);
+  view.run = *id;
   const auto known =
       one<std::string>(connection, "SELECT id FROM view WHERE path = ? AND dataset = ?",
                        {view.path, view.dataset}, [](const Query& row) { return row.text(0); });
@@ -164,24 +188,25 @@ Expected<void> name_view(Connection& connection, ViewRecord& view) {
     return {};
   }
   const std::string wanted = wanted_view_id(view);
-  view.id = wanted;
-  for (int number = 2;; ++number) {
-    const auto is_used = exists(connection, "SELECT 1 FROM view WHERE id = ?", {view.id});
-    if (!is_used) return failure(is_used);
-    if (!*is_used) return {};
-    view.id = fmt::format("{}-{}", wanted, number);
-  }
+  id = free_id(wanted, wanted, [&](const std::string& candidate) {
+    return exists(connection, "SELECT 1 FROM view WHERE id = ?", {candidate});
+  });
+  if (!id) return failure(id);
+  view.id = *id;
+  return {};
 }
 
-constexpr std::string_view run_sql =
-    "SELECT run, max(run_name), campaign, max(campaign_name), max(source), count(*), min(azimuth_deg), "
-    "max(azimuth_deg), "
-    "min(elevation_deg), max(elevation_deg), "
-    "iif(min(mach) = max(mach), min(mach), NULL), iif(min(velocity_m_s) = max(velocity_m_s), "
-    "min(velocity_m_s), NULL), "
-    "iif(min(density_kg_m3) = max(density_kg_m3), min(density_kg_m3), NULL), "
-    "iif(min(temperature_k) = max(temperature_k), min(temperature_k), NULL), "
-    "iif(min(reference_length_m) = max(reference_length_m), min(reference_length_m), NULL) FROM view ";
+// A condition is the run's when every view states it, and all the same.
+constexpr std::string_view run_sql = R"(
+SELECT run, max(run_name), campaign, max(campaign_name), max(source), count(*),
+       min(azimuth_deg), max(azimuth_deg), min(elevation_deg), max(elevation_deg),
+       iif(count(mach) = count(*) AND min(mach) = max(mach), min(mach), NULL),
+       iif(count(velocity_m_s) = count(*) AND min(velocity_m_s) = max(velocity_m_s), min(velocity_m_s), NULL),
+       iif(count(density_kg_m3) = count(*) AND min(density_kg_m3) = max(density_kg_m3), min(density_kg_m3), NULL),
+       iif(count(temperature_k) = count(*) AND min(temperature_k) = max(temperature_k), min(temperature_k), NULL),
+       iif(count(reference_length_m) = count(*) AND min(reference_length_m) = max(reference_length_m),
+           min(reference_length_m), NULL)
+FROM view )";
 
 RunRecord run_of(const Query& row) {
   return {.id = row.text(0),
@@ -246,21 +271,28 @@ class Index::Lock {
   }
   ~Lock() {
     // A lock that cannot be emptied costs a check at the next start.
-    static_cast<void>(::ftruncate(descriptor_, 0) == 0);
+    if (is_in_use_) static_cast<void>(::ftruncate(descriptor_, 0) == 0);
     ::close(descriptor_);
   }
   Lock(const Lock&) = delete;
   Lock& operator=(const Lock&) = delete;
   bool was_left_behind() const { return was_left_behind_; }
+  /// The index has passed its checks. Until then what the last process left stays to be checked.
+  void note_use() { is_in_use_ = true; }
 
  private:
   explicit Lock(int descriptor) : descriptor_(descriptor) {}
   const int descriptor_;
+  bool is_in_use_ = false;
   bool was_left_behind_ = false;
 };
 
 Index::Index(fs::path state) : state_(std::move(state)) {}
 Index::~Index() = default;
+
+bool Index::was_left_uncleanly() const {
+  return lock_ && lock_->was_left_behind();
+}
 
 Expected<std::unique_ptr<Index>> Index::open_for_writing(const fs::path& state) {
   std::error_code error;
@@ -278,7 +310,8 @@ Expected<std::unique_ptr<Index>> Index::open_for_writing(const fs::path& state) 
   if (index->lock_->was_left_behind()) {
     if (auto checked = quick_check(*index->writer_); !checked) return failure(checked);
   }
-  if (auto migrated = migrate(*index->writer_); !migrated) return failure(migrated);
+  if (auto migrated = migrate(*index->writer_, migrations()); !migrated) return failure(migrated);
+  index->lock_->note_use();
   return index;
 }
 
@@ -288,7 +321,14 @@ Expected<std::unique_ptr<Index>> Index::open_for_reading(const fs::path& state) 
                    state.string());
   }
   std::unique_ptr<Index> index(new Index(state));
-  if (const auto counts = index->counts(); !counts) return failure(counts);
+  const auto version =
+      index->reading<int>([](Connection& connection) { return version_of(connection, migrations()); });
+  if (!version) return failure(version);
+  if (*version < migrations().back().version) {
+    return failure(ErrorCode::not_indexed,
+                   "the index is of an earlier version; bentlight index brings it up to date",
+                   state.string());
+  }
   return index;
 }
 
@@ -319,7 +359,9 @@ Expected<void> Index::writing(const std::function<Expected<void>(Connection&)>& 
   if (!writer_) return failure(ErrorCode::internal, "this index was opened for reading");
   auto transaction = Transaction::begin(*writer_);
   if (!transaction) return failure(transaction);
+  const std::int64_t before = writer_->changed_rows();
   if (auto changed = change(*writer_); !changed) return changed;
+  if (writer_->changed_rows() == before) return {};
   if (auto risen = writer_->execute("UPDATE revision SET number = number + 1"); !risen) return risen;
   return transaction->commit();
 }
@@ -344,7 +386,7 @@ Expected<ViewRecord> Index::upsert_view(ViewRecord record) {
 
 Expected<void> Index::mark_missing(const std::string& path) {
   return writing([&](Connection& connection) -> Expected<void> {
-    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ?");
+    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ? AND state <> 'missing'");
     if (!mark) return failure(mark);
     if (auto done = mark->bind(std::string_view(path)).run(); !done) return done;
     auto forget = connection.query("DELETE FROM refusal WHERE path = ?");
@@ -353,9 +395,32 @@ Expected<void> Index::mark_missing(const std::string& path) {
   });
 }
 
+Expected<void> Index::mark_present(const std::string& path) {
+  return writing([&](Connection& connection) -> Expected<void> {
+    auto mark = connection.query("UPDATE view SET state = 'ready' WHERE path = ? AND state <> 'ready'");
+    if (!mark) return failure(mark);
+    return mark->bind(std::string_view(path)).run();
+  });
+}
+
+Expected<void> Index::read_again(const std::string& id) {
+  return writing([&](Connection& connection) -> Expected<void> {
+    auto forget = connection.query("UPDATE view SET size_bytes = 0, mtime_ns = 0, inode = 0 WHERE id = ?");
+    if (!forget) return failure(forget);
+    return forget->bind(std::string_view(id)).run();
+  });
+}
+
 Expected<void> Index::put_refusal(const RefusalRecord& refusal) {
   return writing([&](Connection& connection) -> Expected<void> {
-    auto put = connection.query("INSERT OR REPLACE INTO refusal VALUES (?, ?, ?, ?, ?, ?, ?)");
+    // The same refusal again changes nothing.
+    auto put = connection.query(R"(
+INSERT INTO refusal (path, code, text, refused_at_ms, size_bytes, mtime_ns, inode) VALUES (?, ?, ?, ?, ?, ?, ?)
+ON CONFLICT (path) DO UPDATE
+SET code = excluded.code, text = excluded.text, refused_at_ms = excluded.refused_at_ms,
+    size_bytes = excluded.size_bytes, mtime_ns = excluded.mtime_ns, inode = excluded.inode
+WHERE (code, text, size_bytes, mtime_ns, inode) IS NOT
+      (excluded.code, excluded.text, excluded.size_bytes, excluded.mtime_ns, excluded.inode))");
     if (!put) return failure(put);
     put->bind(std::string_view(refusal.path))
         .bind(std::string_view(refusal.code))
@@ -366,17 +431,9 @@ Expected<void> Index::put_refusal(const RefusalRecord& refusal) {
         .bind(refusal.stamp.inode);
     if (auto done = put->run(); !done) return done;
     // A view of this path was of another state of the file, which is gone.
-    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ?");
+    auto mark = connection.query("UPDATE view SET state = 'missing' WHERE path = ? AND state <> 'missing'");
     if (!mark) return failure(mark);
     return mark->bind(std::string_view(refusal.path)).run();
-  });
-}
-
-Expected<void> Index::forget_refusal(const std::string& path) {
-  return writing([&](Connection& connection) -> Expected<void> {
-    auto forget = connection.query("DELETE FROM refusal WHERE path = ?");
-    if (!forget) return failure(forget);
-    return forget->bind(std::string_view(path)).run();
   });
 }
 
@@ -465,9 +522,9 @@ Expected<Page<RunRecord>> Index::runs(const RunFilter& filter, std::size_t limit
 Expected<Page<CampaignRecord>> Index::campaigns(std::size_t limit, std::size_t offset) const {
   return reading<Page<CampaignRecord>>([&](Connection& connection) -> Expected<Page<CampaignRecord>> {
     auto query = connection.query(
-        "SELECT campaign, max(campaign_name), count(DISTINCT run), count(*) FROM view GROUP BY campaign "
-        "ORDER BY campaign "
-        "LIMIT ? OFFSET ?");
+        R"(
+SELECT campaign, max(campaign_name), count(DISTINCT run), count(*)
+FROM view GROUP BY campaign ORDER BY campaign LIMIT ? OFFSET ?)");
     if (!query) return failure(query);
     query->bind(std::uint64_t{limit + 1}).bind(std::uint64_t{offset});
     return page<CampaignRecord>(*query, limit, [](const Query& row) {
@@ -492,22 +549,22 @@ Expected<Page<RefusalRecord>> Index::refusals(std::size_t limit, std::size_t off
 
 Expected<IndexCounts> Index::counts() const {
   return reading<IndexCounts>([](Connection& connection) -> Expected<IndexCounts> {
-    auto found = one<IndexCounts>(
-        connection,
-        "SELECT count(DISTINCT campaign), count(DISTINCT run), count(*), count(*) FILTER (WHERE state = "
-        "'missing'), "
-        "(SELECT count(*) FROM refusal), coalesce(sum(frames), 0), coalesce(sum(size_bytes), 0), "
-        "(SELECT number FROM revision) FROM view",
-        {}, [](const Query& row) {
-          return IndexCounts{.campaigns = row.size(0),
-                             .runs = row.size(1),
-                             .views = row.size(2),
-                             .missing = row.size(3),
-                             .refusals = row.size(4),
-                             .frames = row.size(5),
-                             .bytes = row.size(6),
-                             .revision = row.size(7)};
-        });
+    auto found = one<IndexCounts>(connection,
+                                  R"(
+SELECT count(DISTINCT campaign), count(DISTINCT run), count(*), count(*) FILTER (WHERE state = 'missing'),
+       (SELECT count(*) FROM refusal), coalesce(sum(frames), 0), coalesce(sum(size_bytes), 0),
+       (SELECT number FROM revision)
+FROM view)",
+                                  {}, [](const Query& row) {
+                                    return IndexCounts{.campaigns = row.size(0),
+                                                       .runs = row.size(1),
+                                                       .views = row.size(2),
+                                                       .missing = row.size(3),
+                                                       .refusals = row.size(4),
+                                                       .frames = row.size(5),
+                                                       .bytes = row.size(6),
+                                                       .revision = row.size(7)};
+                                  });
     if (!found) return failure(found);
     return found->value_or(IndexCounts{});
   });
@@ -516,15 +573,16 @@ Expected<IndexCounts> Index::counts() const {
 Expected<std::vector<KnownFile>> Index::known_files() const {
   return reading<std::vector<KnownFile>>([](Connection& connection) -> Expected<std::vector<KnownFile>> {
     // A path that was refused last is known by its refusal.
-    auto query = connection.query(
-        "SELECT path, size_bytes, mtime_ns, inode, 'refused' FROM refusal UNION ALL SELECT path, size_bytes, "
-        "mtime_ns, "
-        "inode, state FROM view WHERE path NOT IN (SELECT path FROM refusal)");
+    auto query = connection.query(R"(
+SELECT path, size_bytes, mtime_ns, inode, 'refused', '' FROM refusal
+UNION ALL
+SELECT path, size_bytes, mtime_ns, inode, state, folder FROM view WHERE path NOT IN (SELECT path FROM refusal))");
     if (!query) return failure(query);
     return all<KnownFile>(*query, [](const Query& row) {
       return KnownFile{.path = row.text(0),
                        .stamp = {.size_bytes = row.size(1), .mtime_ns = row.whole(2), .inode = row.size(3)},
-                       .state = row.text(4)};
+                       .state = row.text(4),
+                       .folder = row.text(5)};
     });
   });
 }

@@ -67,7 +67,8 @@ struct IndexCounts {
 struct KnownFile {
   std::string path;
   FileStamp stamp;
-  std::string state;  // ready, missing, refused
+  std::string state;   // ready, missing, refused
+  std::string folder;  // below STATE/views; empty when refused
 };
 
 struct ColumnRange {
@@ -108,12 +109,22 @@ class Index {
   static Expected<std::unique_ptr<Index>> open_for_reading(const std::filesystem::path& state);
   ~Index();
 
+  /// Whether the process that wrote last was killed or lost its power.
+  bool was_left_uncleanly() const;
+
+  // Each of the following is one transaction; the revision rises if it changed anything.
+
   /// Keeps a view. Its id stays with its path and dataset; a new one is made of run and angles. A refusal of
   /// the same path is forgotten. Gives the record as kept.
   Expected<ViewRecord> upsert_view(ViewRecord record);
+  /// The file is gone: its views keep their summaries, a refusal of it is forgotten.
   Expected<void> mark_missing(const std::string& path);
+  /// The file is back as it was.
+  Expected<void> mark_present(const std::string& path);
+  /// The view's summary turned out damaged: its file is read at the next indexing, changed or not.
+  Expected<void> read_again(const std::string& id);
+  /// Says why a file is not indexed. Views of its path were of another state of the file and become missing.
   Expected<void> put_refusal(const RefusalRecord& refusal);
-  Expected<void> forget_refusal(const std::string& path);
 
   /// errors  unknown_view
   Expected<ViewRecord> view(const std::string& id) const;

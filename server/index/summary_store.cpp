@@ -1,7 +1,10 @@
 #include "index/summary_store.h"
 
 #include <algorithm>
+#include <array>
+#include <bit>
 #include <nlohmann/json.hpp>
+#include <stdexcept>
 
 #include "base/npy.h"
 
@@ -44,44 +47,69 @@ Expected<void> save_array(const FileSystem& files,
                       npy_image(descr_of<Element>(), extents, std::as_bytes(std::span(data))));
 }
 
-/// How many nodes each level of the tree has: all blocks, then half of what is below, rounded up, until one
-/// is left.
-std::vector<std::size_t> level_sizes(std::size_t blocks) {
-  std::vector<std::size_t> sizes = {blocks};
-  while (sizes.back() > 1) sizes.push_back((sizes.back() + 1) / 2);
-  return sizes;
+/// Nodes of a tree over so many blocks. A node stands behind those that it was merged of, so that all nodes
+/// of the first n blocks lie before the rest; there are n of level 0, n / 2 of level 1, and so on, which sums
+/// to 2 n less the ones in n as a binary number.
+std::size_t nodes_over(std::size_t blocks) {
+  return 2 * blocks - static_cast<std::size_t>(std::popcount(blocks));
 }
 
-struct Tree {
-  std::vector<std::int64_t> count;  // [nodes]
-  std::vector<float> mean, m2;      // [nodes][points]
+/// Where the node lies that holds the blocks from number * 2^level on.
+std::size_t node_place(std::size_t level, std::size_t number) {
+  const std::size_t last_block = ((number + 1) << level) - 1;
+  return nodes_over(last_block) + level;
+}
 
-  void add(const optics::MomentMaps& maps) {
-    count.push_back(static_cast<std::int64_t>(maps.count));
-    mean.insert(mean.end(), maps.mean.begin(), maps.mean.end());
-    m2.insert(m2.end(), maps.m2.begin(), maps.m2.end());
-  }
-};
-
-Tree tree_of(std::vector<optics::MomentMaps> level) {
-  Tree tree;
-  while (true) {
-    for (const auto& maps : level) tree.add(maps);
-    if (level.size() <= 1) return tree;
-    std::vector<optics::MomentMaps> above;
-    for (std::size_t i = 0; i < level.size(); i += 2) {
-      above.push_back(std::move(level[i]));
-      if (i + 1 < level.size()) above.back().merge(level[i + 1]);
-    }
-    level = std::move(above);
-  }
+Expected<std::unique_ptr<NewFile>> start_maps(const FileSystem& files,
+                                              const std::filesystem::path& path,
+                                              std::size_t nodes,
+                                              std::size_t points) {
+  auto file = files.start(path);
+  if (!file) return file;
+  const std::array shape = {nodes, points};
+  if (auto begun = (*file)->append(npy_image(descr_of<float>(), shape, {})); !begun) return failure(begun);
+  return file;
 }
 
 }  // namespace
 
-Expected<void> save_summary(const FileSystem& files,
-                            const std::filesystem::path& folder,
-                            const SummaryData& summary) {
+Expected<SummaryWriter> SummaryWriter::start(const FileSystem& files,
+                                             std::filesystem::path folder,
+                                             std::size_t points,
+                                             std::size_t blocks) {
+  SummaryWriter writer(files, std::move(folder), blocks);
+  auto means = start_maps(files, writer.folder_ / "node_mean.npy", nodes_over(blocks), points);
+  if (!means) return failure(means);
+  auto m2s = start_maps(files, writer.folder_ / "node_m2.npy", nodes_over(blocks), points);
+  if (!m2s) return failure(m2s);
+  writer.means_ = std::move(*means);
+  writer.m2s_ = std::move(*m2s);
+  return writer;
+}
+
+Expected<void> SummaryWriter::add_node(const optics::MomentMaps& maps) {
+  counts_.push_back(static_cast<std::int64_t>(maps.count));
+  const std::vector<float> mean(maps.mean.begin(), maps.mean.end()), m2(maps.m2.begin(), maps.m2.end());
+  if (auto added = means_->append(std::as_bytes(std::span(mean))); !added) return added;
+  return m2s_->append(std::as_bytes(std::span(m2)));
+}
+
+Expected<void> SummaryWriter::add_block(optics::MomentMaps maps) {
+  if (added_ == blocks_) throw std::invalid_argument("SummaryWriter: more blocks than were announced");
+  if (auto added = add_node(maps); !added) return added;
+  unpaired_.push_back(std::move(maps));
+  ++added_;
+  for (std::size_t left = added_; left % 2 == 0; left /= 2) {
+    const optics::MomentMaps second = std::move(unpaired_.back());
+    unpaired_.pop_back();
+    unpaired_.back().merge(second);
+    if (auto added = add_node(unpaired_.back()); !added) return added;
+  }
+  return {};
+}
+
+Expected<void> SummaryWriter::finish(const SummaryData& summary) {
+  if (added_ != blocks_) throw std::invalid_argument("SummaryWriter: blocks are missing");
   const nlohmann::ordered_json shape = {{"version", summary_version},
                                         {"frames", summary.frames},
                                         {"points", summary.points},
@@ -89,14 +117,13 @@ Expected<void> save_summary(const FileSystem& files,
                                         {"rows", summary.rows},
                                         {"columns", summary.columns},
                                         {"block_frames", summary.block_frames},
-                                        {"blocks", summary.blocks.size()}};
-  if (auto saved = files.create(folder / "summary.json", as_bytes(shape.dump(2))); !saved) return saved;
-  const Tree tree = tree_of(summary.blocks);
-  const std::size_t nodes = tree.count.size();
-  Expected<void> saved;
+                                        {"blocks", blocks_}};
+  Expected<void> saved = files_->create(folder_ / "summary.json", as_bytes(shape.dump(2)));
+  if (saved) saved = means_->finish();
+  if (saved) saved = m2s_->finish();
   const auto save = [&](const std::string& name, std::initializer_list<std::size_t> extents,
                         const auto& data) {
-    if (saved) saved = save_array(files, folder, name, extents, data);
+    if (saved) saved = save_array(*files_, folder_, name, extents, data);
   };
   save("coefficients", {summary.modes, summary.frames}, summary.coefficients);
   save("residual", {summary.frames}, summary.residual);
@@ -107,9 +134,7 @@ Expected<void> save_summary(const FileSystem& files,
   save("mean_coefficients", {summary.modes}, summary.mean_coefficients);
   save("steady_lensing", {summary.points}, summary.steady_lensing);
   save("native_mask", {summary.rows, summary.columns}, summary.mask);
-  save("node_count", {nodes}, tree.count);
-  save("node_mean", {nodes, summary.points}, tree.mean);
-  save("node_m2", {nodes, summary.points}, tree.m2);
+  save("node_count", {counts_.size()}, counts_);
   return saved;
 }
 
@@ -176,9 +201,7 @@ Expected<std::vector<std::uint8_t>> SummaryReader::mask() const {
 }
 
 Expected<optics::MomentMaps> SummaryReader::node(std::size_t level, std::size_t number) const {
-  const auto sizes = level_sizes(shape_.blocks);
-  std::size_t place = number;
-  for (std::size_t below = 0; below < level; ++below) place += sizes[below];
+  const std::size_t place = node_place(level, number);
   const auto count = part<std::int64_t>("node_count", place, 1);
   if (!count) return failure(count);
   const auto mean = part<float>("node_mean", place * shape_.points, shape_.points);
@@ -192,19 +215,14 @@ Expected<optics::MomentMaps> SummaryReader::node(std::size_t level, std::size_t 
 
 Expected<optics::MomentMaps> SummaryReader::maps(std::size_t first, std::size_t count) const {
   optics::MomentMaps merged = optics::MomentMaps::of(shape_.points);
-  const std::size_t end = first + count;
-  while (first < end) {
-    // The highest node that begins here and does not reach past the end; the last of a level may be short.
-    std::size_t level = 0, span = 1;
-    while (first % (2 * span) == 0 && std::min(first + 2 * span, shape_.blocks) <= end &&
-           span < shape_.blocks) {
-      span *= 2;
-      ++level;
-    }
-    const auto part = node(level, first / span);
+  for (const std::size_t end = first + count; first < end;) {
+    // The highest node that begins here and does not reach past the end.
+    std::size_t level = 0;
+    while (first % (std::size_t{2} << level) == 0 && first + (std::size_t{2} << level) <= end) ++level;
+    const auto part = node(level, first >> level);
     if (!part) return failure(part);
     merged.merge(*part);
-    first = std::min(end, first + span);
+    first += std::size_t{1} << level;
   }
   return merged;
 }

@@ -29,16 +29,48 @@ struct SummaryData {
   std::vector<double> mean_coefficients;         // [modes], over finite frames
   std::vector<double> steady_lensing;            // [points], without piston, tip and tilt
   std::vector<std::uint8_t> mask;                // [rows][columns]; the native aperture
-  std::vector<optics::MomentMaps> blocks;        // [blocks]; of frames without piston, tip and tilt
 };
 
-/// Writes a summary's files into a folder that is not published yet. The blocks' maps are kept as float, with
-/// a tree of pairwise merges above them.
+/// Writes a summary's files into a folder that is not published yet.
 ///
-///   errors  as FileSystem::create
-Expected<void> save_summary(const FileSystem& files,
-                            const std::filesystem::path& folder,
-                            const SummaryData& summary);
+/// The maps of the blocks go to disk as they come, as float, each followed by the nodes of the tree that it
+/// completes: a node is the merge of two of the level below. So a view of any length is indexed in the same
+/// memory.
+///
+///   threads  one at a time
+class SummaryWriter {
+ public:
+  /// errors  as FileSystem::start
+  static Expected<SummaryWriter> start(const FileSystem& files,
+                                       std::filesystem::path folder,
+                                       std::size_t points,
+                                       std::size_t blocks);
+
+  /// Takes the next block's moments of frames without piston, tip and tilt.
+  ///
+  ///   errors  disk_full, io_error
+  ///   throws  std::invalid_argument beyond the blocks that were announced
+  Expected<void> add_block(optics::MomentMaps maps);
+
+  /// Writes the rest. Nothing can be added after this.
+  ///
+  ///   errors  disk_full, io_error
+  ///   throws  std::invalid_argument when blocks are missing
+  Expected<void> finish(const SummaryData& summary);
+
+ private:
+  SummaryWriter(const FileSystem& files, std::filesystem::path folder, std::size_t blocks)
+      : files_(&files), folder_(std::move(folder)), blocks_(blocks) {}
+  Expected<void> add_node(const optics::MomentMaps& maps);
+
+  const FileSystem* files_;
+  std::filesystem::path folder_;
+  std::size_t blocks_, added_ = 0;
+  std::unique_ptr<NewFile> means_, m2s_;  // [nodes][points]
+  std::vector<std::int64_t> counts_;      // [nodes so far]
+  std::vector<optics::MomentMaps>
+      unpaired_;  // nodes that wait for their neighbour, from the highest level down
+};
 
 /// Reads parts of a summary.
 ///

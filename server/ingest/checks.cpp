@@ -1,9 +1,9 @@
 #include "ingest/checks.h"
 
+#include <fmt/format.h>
+
 #include <algorithm>
 #include <cmath>
-
-#include <fmt/format.h>
 #include <nlohmann/json.hpp>
 
 namespace bentlight::ingest {
@@ -25,13 +25,16 @@ void check_frames(const index::SummaryData& summary, Checks& checks) {
   const auto finite = static_cast<std::size_t>(std::ranges::count(summary.finite, 1));
   const std::size_t missing = summary.frames - finite;
   if (missing > 0) {
-    checks.found("frames-with-nan", "warning", static_cast<double>(missing) / static_cast<double>(summary.frames),
-                 fmt::format("{} of {} frames hold NaN inside the aperture and are left out.", missing, summary.frames));
+    checks.found("frames-with-nan", "warning",
+                 static_cast<double>(missing) / static_cast<double>(summary.frames),
+                 fmt::format("{} of {} frames hold NaN inside the aperture and are left out.", missing,
+                             summary.frames));
   }
   // Two frames alike in every coefficient and in what is left are one frame stored twice.
   std::size_t repeated = 0;
   for (std::size_t t = 1; t < summary.frames; ++t) {
-    bool is_same = summary.finite[t] && summary.finite[t - 1] && summary.residual[t] == summary.residual[t - 1];
+    bool is_same =
+        summary.finite[t] && summary.finite[t - 1] && summary.residual[t] == summary.residual[t - 1];
     for (std::size_t k = 0; is_same && k < summary.modes; ++k) {
       const double* row = summary.coefficients.data() + k * summary.frames;
       is_same = row[t] == row[t - 1];
@@ -68,35 +71,21 @@ void check_clock(const archive::WavefrontFile& file, Checks& checks) {
   }
 }
 
-void check_points(const index::SummaryData& summary, Checks& checks) {
-  optics::MomentMaps record = optics::MomentMaps::of(summary.points);
-  for (const auto& block : summary.blocks) record.merge(block);
-  if (record.count < 2) return;
-  // A point that does not move with the others keeps only what removing the plane puts on it: its spread is far below
-  // the median of all (six robust deviations of the logarithm, common practice).
-  std::vector<double> spread;
-  for (const double m2 : record.m2) spread.push_back(std::log(std::max(m2, 1e-300)));
-  std::vector<double> sorted = spread;
-  const auto middle = sorted.begin() + static_cast<std::ptrdiff_t>(sorted.size() / 2);
-  std::ranges::nth_element(sorted, middle);
-  const double median = *middle;
-  for (double& value : sorted) value = std::abs(value - median);
-  std::ranges::nth_element(sorted, middle);
-  const double robust_deviation = std::max(1.4826 * *middle, 0.05);
-  const auto dead = std::ranges::count_if(spread, [&](double value) { return value < median - 6 * robust_deviation; });
-  if (dead > 0) {
-    checks.found("dead-points", "warning", static_cast<double>(dead),
-                 fmt::format("{} of {} points hardly move and are probably dead.", dead, summary.points));
-  }
+void check_points(std::size_t dead, std::size_t points, Checks& checks) {
+  if (dead == 0) return;
+  checks.found("dead-points", "warning", static_cast<double>(dead),
+               fmt::format("{} of {} points do not move at all and are probably dead.", dead, points));
 }
 
 }  // namespace
 
-std::string checks_json(const archive::WavefrontFile& file, const index::SummaryData& summary) {
+std::string checks_json(const archive::WavefrontFile& file,
+                        const index::SummaryData& summary,
+                        std::size_t dead_points) {
   Checks checks;
   check_frames(summary, checks);
   check_clock(file, checks);
-  check_points(summary, checks);
+  check_points(dead_points, summary.points, checks);
   return checks.text();
 }
 

@@ -1,13 +1,13 @@
 #include "ingest/indexer.h"
 
+#include <fmt/format.h>
+#include <unistd.h>
+
 #include <algorithm>
 #include <cmath>
 #include <numeric>
 #include <set>
 #include <unordered_map>
-
-#include <fmt/format.h>
-#include <unistd.h>
 
 #include "archive/frame_reader.h"
 #include "base/limits.h"
@@ -25,18 +25,21 @@ namespace fs = std::filesystem;
 namespace {
 
 std::int64_t now_ms() {
-  return std::chrono::duration_cast<std::chrono::milliseconds>(std::chrono::system_clock::now().time_since_epoch())
+  return std::chrono::duration_cast<std::chrono::milliseconds>(
+             std::chrono::system_clock::now().time_since_epoch())
       .count();
 }
 
-/// Errors of the state folder or of the machine end the whole walk; all others are about one file.
-bool ends_the_walk(ErrorCode code) {
+/// Whether the same file would be refused again: then it is not tried before it changes.
+bool lasts(ErrorCode code) {
   switch (code) {
-    case ErrorCode::cancelled:
-    case ErrorCode::disk_full:
-    case ErrorCode::damaged_state:
-    case ErrorCode::state_locked:
-    case ErrorCode::internal:
+    case ErrorCode::not_hdf5:
+    case ErrorCode::damaged_file:
+    case ErrorCode::layout_mismatch:
+    case ErrorCode::unsupported_storage:
+    case ErrorCode::unsafe_file:
+    case ErrorCode::too_large:
+    case ErrorCode::degenerate_aperture:
       return true;
     default:
       return false;
@@ -105,10 +108,15 @@ Indexer::Indexer(IndexerParts parts, fs::path archive, fs::path state)
 IndexProgress Indexer::progress() const {
   const std::lock_guard lock(mutex_);
   IndexProgress progress = progress_;
-  progress.bytes_done = std::min(bytes_read_.load(), progress.bytes_total);
-  const double seconds = std::chrono::duration<double>(std::chrono::steady_clock::now() - started_).count();
-  if (progress.is_running && seconds > 0.0) progress.bytes_per_second = static_cast<double>(progress.bytes_done) / seconds;
+  if (!progress.is_running) return progress;
+  progress.bytes_done = std::min(progress.bytes_done + bytes_of_current_.load(), progress.bytes_total);
+  progress.bytes_per_second = rate(progress.bytes_done);
   return progress;
+}
+
+double Indexer::rate(std::uint64_t bytes) const {
+  const std::chrono::duration<double> elapsed = std::chrono::steady_clock::now() - started_;
+  return elapsed.count() > 0.0 ? static_cast<double>(bytes) / elapsed.count() : 0.0;
 }
 
 void Indexer::note(const std::function<void(IndexProgress&)>& change) {
@@ -121,15 +129,15 @@ Expected<IndexProgress> Indexer::run(const std::stop_token& stop) {
     const std::lock_guard lock(mutex_);
     progress_ = {.is_running = true};
     started_ = std::chrono::steady_clock::now();
-    bytes_read_ = 0;
+    bytes_of_current_ = 0;
   }
+  clean_up();  // what an earlier process left behind may fill the disk
   const auto walk = walk_archive(parts_.files, archive_);
   Expected<void> done = walk ? index_all(*walk, stop) : Expected<void>(failure(walk));
   if (done) done = mark_vanished(*walk);
   clean_up();
   note([&](IndexProgress& progress) {
-    const double seconds = std::chrono::duration<double>(std::chrono::steady_clock::now() - started_).count();
-    progress.bytes_per_second = seconds > 0 ? static_cast<double>(bytes_read_.load()) / seconds : 0.0;
+    progress.bytes_per_second = rate(progress.bytes_done);
     progress.is_running = false;
     progress.current.clear();
     if (!done) progress.error = done.error();
@@ -138,42 +146,65 @@ Expected<IndexProgress> Indexer::run(const std::stop_token& stop) {
   return progress();
 }
 
-Expected<void> Indexer::index_all(const Walk& walk, const std::stop_token& stop) {
+Expected<std::vector<FoundFile>> Indexer::changed_files(const Walk& walk) {
   const auto known = parts_.index.known_files();
   if (!known) return failure(known);
-  std::unordered_map<std::string, FileStamp> unchanged;
-  for (const auto& file : *known) {
-    if (file.state != "missing") unchanged.emplace(file.path, file.stamp);
-  }
-  std::vector<const FoundFile*> to_read;
-  std::uint64_t bytes = 0;
+  std::unordered_map<std::string, const index::KnownFile*> by_path;
+  for (const auto& file : *known) by_path.emplace(file.path, &file);
+  std::vector<FoundFile> changed;
   for (const FoundFile& file : walk.files) {
-    const auto found = unchanged.find(file.path.string());
-    if (found != unchanged.end() && found->second == file.stamp) continue;
-    to_read.push_back(&file);
-    bytes += file.stamp.size_bytes;
+    const auto found = by_path.find(file.path.string());
+    if (found == by_path.end() || found->second->stamp != file.stamp || !is_kept(*found->second)) {
+      changed.push_back(file);
+    } else if (found->second->state == "missing") {
+      if (auto marked = parts_.index.mark_present(file.path.string()); !marked) return failure(marked);
+    }
   }
-  note([&](IndexProgress& progress) {
-    progress.files_total = walk.files.size();
-    progress.unchanged = progress.files_done = walk.files.size() - to_read.size();
-    progress.bytes_total = bytes;
-  });
+  return changed;
+}
+
+/// After an unclean stop what is kept of each view is looked at, too: a power cut can undo what a disk
+/// promised.
+bool Indexer::is_kept(const index::KnownFile& file) const {
+  if (file.state == "refused" || !parts_.index.was_left_uncleanly()) return true;
+  return SealedFolder::open(parts_.files, state_ / "views" / file.folder).has_value();
+}
+
+Expected<void> Indexer::index_all(const Walk& walk, const std::stop_token& stop) {
   for (const Error& error : walk.unreadable) {
     if (auto refused = refuse(error.subject, {}, error); !refused) return refused;
   }
-  for (const FoundFile* file : to_read) {
+  const auto changed = changed_files(walk);
+  if (!changed) return failure(changed);
+  note([&](IndexProgress& progress) {
+    progress.files_total = walk.files.size();
+    progress.unchanged = progress.files_done = walk.files.size() - changed->size();
+    for (const FoundFile& file : *changed) progress.bytes_total += file.stamp.size_bytes;
+  });
+  for (const FoundFile& file : *changed) {
     if (stop.stop_requested()) return failure(ErrorCode::cancelled, "indexing was stopped");
-    note([&](IndexProgress& progress) { progress.current = file->path.string(); });
-    if (auto indexed = index_one(*file, stop); !indexed) return indexed;
-    note([](IndexProgress& progress) { ++progress.files_done; });
+    note([&](IndexProgress& progress) { progress.current = file.path.string(); });
+    if (auto indexed = index_one(file, stop); !indexed) return indexed;
+    note([&](IndexProgress& progress) {
+      ++progress.files_done;
+      progress.bytes_done += file.stamp.size_bytes;
+      bytes_of_current_ = 0;
+    });
   }
   return {};
+}
+
+/// A stop and faults of the machine end the walk; everything else that reading a file meets is about that
+/// file.
+bool Indexer::ends_the_walk(const Error& error) const {
+  return error.code == ErrorCode::cancelled || error.code == ErrorCode::internal ||
+         error.code == ErrorCode::disk_full || error.subject.starts_with(state_.string());
 }
 
 Expected<void> Indexer::index_one(const FoundFile& file, const std::stop_token& stop) {
   const auto record = read_view(file, stop);
   if (!record) {
-    if (ends_the_walk(record.error().code)) return failure(record);
+    if (ends_the_walk(record.error())) return failure(record);
     return refuse(file.path.string(), file.stamp, record.error());
   }
   const auto kept = parts_.index.upsert_view(*record);
@@ -188,43 +219,45 @@ Expected<index::ViewRecord> Indexer::read_view(const FoundFile& found, const std
   if (!file) return failure(file);
   const auto reader = archive::FrameReader::open(parts_.files, path, file->map, file->identity);
   if (!reader) return failure(reader);
-  auto grid = native_grid(*file, *reader);
-  if (!grid) return failure(grid);
-  file->grid = std::move(*grid);
+  auto native = native_aperture(*file, *reader, parts_.pool, stop);
+  if (!native) return failure(native);
+  file->grid = std::move(native->grid);
   const auto aperture = optics::Aperture::of(file->grid);
   if (!aperture) return failure(aperture);
-  const auto summary = summarize_view(*reader, file->grid, *aperture, {.retained_bytes = limits::index_memory_bytes},
-                                      parts_.pool, stop, bytes_read_);
-  if (!summary) return failure(summary);
-  if (const auto same = reader->verify_unchanged(); !same) return failure(same);
 
-  index::ViewRecord record = record_of(*file, found.path);
-  add_figures(*summary, record);
-  record.checks = checks_json(*file, *summary);
-  record.folder = fmt::format("{:x}-{:x}-{:x}", now_ms(), ::getpid(), ++folders_made_);
-  const fs::path staging = state_ / "staging" / record.folder;
+  // What is kept of a view appears under its name whole or not at all.
+  const std::string folder = fmt::format("{:x}-{:x}-{:x}", now_ms(), ::getpid(), ++folders_made_);
+  const fs::path staging = state_ / "staging" / folder;
   std::error_code error;
   fs::create_directories(staging, error);
   if (error) return system_failure(error.value(), "creating the folder", staging.string());
-  // What is kept of a view appears under its name whole or not at all.
-  SealedFolderWriter writer(parts_.files, staging);
+  const auto summary =
+      summarize_view(*reader, file->grid, *aperture, parts_.files, staging,
+                     {.retained_bytes = limits::index_memory_bytes}, parts_.pool, stop, bytes_of_current_);
+  if (!summary) return failure(summary);
+  if (const auto same = reader->verify_unchanged(); !same) return failure(same);
   if (auto saved = archive::save_wavefront_file(parts_.files, staging, *file); !saved) return failure(saved);
-  if (auto saved = index::save_summary(parts_.files, staging, *summary); !saved) return failure(saved);
-  if (auto sealed = writer.seal(); !sealed) return failure(sealed);
-  if (auto published = parts_.files.publish_folder(staging, state_ / "views" / record.folder); !published) {
+  if (auto sealed = SealedFolderWriter(parts_.files, staging).seal(); !sealed) return failure(sealed);
+  if (auto published = parts_.files.publish_folder(staging, state_ / "views" / folder); !published) {
     return failure(published);
   }
+
+  index::ViewRecord record = record_of(*file, found.path);
+  add_figures(*summary, record);
+  record.checks = checks_json(*file, *summary, native->dead_points);
+  record.folder = folder;
   return record;
 }
 
 Expected<void> Indexer::refuse(const std::string& path, const FileStamp& stamp, const Error& error) {
-  parts_.log.warning("refused", {{"path", path}, {"code", std::string(name(error.code))}, {"text", error.text}});
+  parts_.log.warning("refused",
+                     {{"path", path}, {"code", std::string(name(error.code))}, {"text", error.text}});
   note([](IndexProgress& progress) { ++progress.refused; });
   return parts_.index.put_refusal({.path = path,
                                    .code = std::string(name(error.code)),
                                    .text = error.text,
                                    .refused_at_ms = now_ms(),
-                                   .stamp = stamp});
+                                   .stamp = lasts(error.code) ? stamp : FileStamp{}});
 }
 
 Expected<void> Indexer::mark_vanished(const Walk& walk) {
@@ -254,7 +287,8 @@ void Indexer::clean_up() const {
   for (const auto& entry : fs::directory_iterator(state_ / "views", ignored)) {
     if (!used.contains(entry.path().filename().string())) fs::remove_all(entry.path(), ignored);
   }
-  for (const auto& entry : fs::directory_iterator(state_ / "staging", ignored)) fs::remove_all(entry.path(), ignored);
+  for (const auto& entry : fs::directory_iterator(state_ / "staging", ignored))
+    fs::remove_all(entry.path(), ignored);
 }
 
 }  // namespace bentlight::ingest

@@ -1,7 +1,9 @@
 #include "ingest/summarize.h"
 
 #include <algorithm>
+#include <map>
 #include <memory>
+#include <mutex>
 #include <vector>
 
 #include "base/limits.h"
@@ -27,25 +29,64 @@ std::size_t piece_length(std::size_t natural, std::size_t points) {
   return std::max<std::size_t>(1, wanted / natural) * natural;
 }
 
-/// As many modes as the aperture tells apart, up to those that a summary keeps.
+/// As many modes as the aperture tells apart, up to those that a summary keeps and that memory holds.
 Expected<optics::ModeBasis> summary_basis(const optics::Aperture& aperture) {
-  for (std::size_t modes = limits::summary_modes; modes > 3; --modes) {
+  constexpr std::size_t mode_bytes = sizeof(double) + sizeof(float);  // at a point
+  const std::size_t affordable = limits::summary_basis_bytes / (mode_bytes * aperture.points());
+  for (std::size_t modes = std::min(limits::summary_modes, affordable); modes > 3; --modes) {
     if (auto basis = optics::ModeBasis::zernike(aperture, modes)) return basis;
   }
   return optics::ModeBasis::zernike(aperture, 3);
 }
 
+/// Puts the blocks' maps in order, whichever lane is done first: the sums are the same for any number of
+/// threads.
+///
+///   threads  safe from any thread
+class BlockOrder {
+ public:
+  BlockOrder(index::SummaryWriter& writer, std::size_t points)
+      : writer_(writer), record_(optics::MomentMaps::of(points)) {}
+
+  /// errors  as SummaryWriter::add_block
+  Expected<void> put(std::size_t block, optics::MomentMaps maps) {
+    const std::lock_guard lock(mutex_);
+    waiting_.emplace(block, std::move(maps));
+    for (; !waiting_.empty() && waiting_.begin()->first == next_; ++next_) {
+      optics::MomentMaps next = std::move(waiting_.extract(waiting_.begin()).mapped());
+      record_.merge(next);
+      if (auto added = writer_.add_block(std::move(next)); !added) return added;
+    }
+    return {};
+  }
+
+  /// Moments of all blocks. Once all are put.
+  optics::MomentMaps take_record() { return std::move(record_); }
+
+ private:
+  std::mutex mutex_;  // guards the members below
+  index::SummaryWriter& writer_;
+  optics::MomentMaps record_;
+  std::map<std::size_t, optics::MomentMaps> waiting_;
+  std::size_t next_ = 0;
+};
+
 class Summarizer {
  public:
-  Summarizer(const archive::FrameReader& reader, const optics::Grid& grid, const optics::Aperture& aperture,
-             const optics::ModeBasis& basis, const SummarizeOptions& options, WorkPool& pool,
-             const std::stop_token& stop, std::atomic<std::uint64_t>& bytes_read)
+  Summarizer(const archive::FrameReader& reader,
+             const optics::Grid& grid,
+             const optics::Aperture& aperture,
+             const optics::ModeBasis& basis,
+             const SummarizeOptions& options,
+             WorkPool& pool,
+             const std::stop_token& stop,
+             std::atomic<std::uint64_t>& bytes_done)
       : reader_(reader),
         aperture_(aperture),
         basis_(basis),
         pool_(pool),
         stop_(stop),
-        bytes_read_(bytes_read),
+        bytes_done_(bytes_done),
         room_(options.retained_bytes) {
     data_.frames = reader.frames();
     data_.points = aperture.points();
@@ -55,26 +96,24 @@ class Summarizer {
     data_.columns = grid.columns;
     data_.mask = grid.mask;
     data_.coefficients.resize(data_.modes * data_.frames);
-    for (auto* series : {&data_.residual, &data_.residual_fluctuation, &data_.tilt_removed, &data_.tilt_removed_fluctuation}) {
+    for (auto* series : {&data_.residual, &data_.residual_fluctuation, &data_.tilt_removed,
+                         &data_.tilt_removed_fluctuation}) {
       series->resize(data_.frames);
     }
     data_.finite.resize(data_.frames);
     blocks_ = (data_.frames + data_.block_frames - 1) / data_.block_frames;
-    data_.blocks.resize(blocks_);
-    const std::size_t piece = piece_length(reader.natural_frames(), data_.points);
-    for (std::size_t first = 0; first < data_.frames;) {
-      const std::size_t block_end = std::min(data_.frames, (first / data_.block_frames + 1) * data_.block_frames);
-      const std::size_t end = std::min(block_end, first + piece);
-      pieces_.push_back({first, end - first});
-      first = end;
-    }
+    cut_pieces(piece_length(reader.natural_frames(), data_.points));
     retained_.resize(pieces_.size());
   }
 
-  Expected<SummaryData> run() {
-    if (auto first = first_pass(); !first) return failure(first);
-    take_means();
+  Expected<SummaryData> run(const FileSystem& files, const std::filesystem::path& folder) {
+    auto writer = index::SummaryWriter::start(files, folder, data_.points, blocks_);
+    if (!writer) return failure(writer);
+    BlockOrder order(*writer, data_.points);
+    if (auto first = first_pass(order); !first) return failure(first);
+    take_means(order.take_record());
     if (auto second = second_pass(); !second) return failure(second);
+    if (auto finished = writer->finish(data_); !finished) return failure(finished);
     return std::move(data_);
   }
 
@@ -84,13 +123,21 @@ class Summarizer {
     archive::FrameReader::Scratch scratch;
   };
 
-  Expected<void> read(FrameRange piece, Lane& lane) {
-    if (auto read = reader_.read(piece, aperture_, lane.block, lane.scratch); !read) return read;
-    bytes_read_ += reader_.stored_bytes(piece);
-    return {};
+  void cut_pieces(std::size_t longest) {
+    for (std::size_t first = 0; first < data_.frames;) {
+      const std::size_t block_end =
+          std::min(data_.frames, (first / data_.block_frames + 1) * data_.block_frames);
+      const std::size_t end = std::min(block_end, first + longest);
+      pieces_.push_back({first, end - first});
+      first = end;
+    }
   }
 
-  Expected<void> first_pass() {
+  Expected<void> read(FrameRange piece, Lane& lane) {
+    return reader_.read(piece, aperture_, lane.block, lane.scratch);
+  }
+
+  Expected<void> first_pass(BlockOrder& order) {
     std::vector<Lane> lanes(pool_.lanes());
     std::vector<std::unique_ptr<optics::BlockSummarizer>> summarizers(lanes.size());
     return pool_.for_each(blocks_, stop_, [&](std::size_t block, std::size_t lane_index) -> Expected<void> {
@@ -105,8 +152,7 @@ class Summarizer {
         maps.merge(summary.maps);
         retain(i, lane.block);
       }
-      data_.blocks[block] = std::move(maps);
-      return {};
+      return order.put(block, std::move(maps));
     });
   }
 
@@ -116,27 +162,28 @@ class Summarizer {
         optics::BlockFluctuation::make(aperture_, basis_, data_.steady_lensing, data_.mean_coefficients);
     if (!fluctuation) return failure(fluctuation);
     std::vector<optics::BlockFluctuation> of_lane(lanes.size(), *fluctuation);
-    return pool_.for_each(pieces_.size(), stop_, [&](std::size_t i, std::size_t lane_index) -> Expected<void> {
-      Lane& lane = lanes[lane_index];
-      if (auto got = recall(i, lane); !got) return got;
-      const FrameRange piece = pieces_[i];
-      std::vector<double> coefficients(data_.modes * piece.count);
-      for (std::size_t k = 0; k < data_.modes; ++k) {
-        const auto row = data_.coefficients.begin() + static_cast<std::ptrdiff_t>(k * data_.frames + piece.first);
-        std::copy_n(row, piece.count, coefficients.begin() + static_cast<std::ptrdiff_t>(k * piece.count));
-      }
-      const auto values = of_lane[lane_index].add(lane.block, coefficients);
-      const auto at = static_cast<std::ptrdiff_t>(piece.first);
-      std::ranges::copy(values.residual, data_.residual_fluctuation.begin() + at);
-      std::ranges::copy(values.tilt_removed, data_.tilt_removed_fluctuation.begin() + at);
-      return {};
-    });
+    return pool_.for_each(
+        pieces_.size(), stop_, [&](std::size_t i, std::size_t lane_index) -> Expected<void> {
+          Lane& lane = lanes[lane_index];
+          if (auto got = recall(i, lane); !got) return got;
+          const FrameRange piece = pieces_[i];
+          std::vector<double> coefficients(data_.modes * piece.count);
+          for (std::size_t k = 0; k < data_.modes; ++k) {
+            const auto row =
+                data_.coefficients.begin() + static_cast<std::ptrdiff_t>(k * data_.frames + piece.first);
+            std::copy_n(row, piece.count,
+                        coefficients.begin() + static_cast<std::ptrdiff_t>(k * piece.count));
+          }
+          const auto values = of_lane[lane_index].add(lane.block, coefficients);
+          const auto at = static_cast<std::ptrdiff_t>(piece.first);
+          std::ranges::copy(values.residual, data_.residual_fluctuation.begin() + at);
+          std::ranges::copy(values.tilt_removed, data_.tilt_removed_fluctuation.begin() + at);
+          return {};
+        });
   }
 
-  /// Means over the record's finite frames, from the first pass, in block order.
-  void take_means() {
-    optics::MomentMaps record = optics::MomentMaps::of(data_.points);
-    for (const auto& block : data_.blocks) record.merge(block);
+  /// Means over the record's finite frames.
+  void take_means(optics::MomentMaps record) {
     data_.steady_lensing = std::move(record.mean);
     data_.mean_coefficients.assign(data_.modes, 0.0);
     if (record.count == 0) return;
@@ -159,17 +206,22 @@ class Summarizer {
     std::ranges::copy(summary.finite, data_.finite.begin() + at);
   }
 
+  /// Keeps a piece for the second pass while there is room.
   void retain(std::size_t i, optics::FrameBlock& block) {
     const std::size_t bytes = block.values.size() * sizeof(float);
     std::size_t room = room_.load();
     while (room >= bytes && !room_.compare_exchange_weak(room, room - bytes)) {
     }
     if (room >= bytes) retained_[i] = std::move(block.values);
+    bytes_done_ += reader_.stored_bytes(pieces_[i]) / (room >= bytes ? 1 : 2);
   }
 
   /// The piece as the first pass left it, or from the file again.
   Expected<void> recall(std::size_t i, Lane& lane) {
-    if (retained_[i].empty()) return read(pieces_[i], lane);
+    if (retained_[i].empty()) {
+      bytes_done_ += reader_.stored_bytes(pieces_[i]) / 2;
+      return read(pieces_[i], lane);
+    }
     lane.block.resize(pieces_[i], data_.points);
     lane.block.values = std::move(retained_[i]);
     std::ranges::fill(lane.block.shift_m, 0.0);
@@ -189,23 +241,28 @@ class Summarizer {
   const optics::ModeBasis& basis_;
   WorkPool& pool_;
   const std::stop_token& stop_;
-  std::atomic<std::uint64_t>& bytes_read_;
+  std::atomic<std::uint64_t>& bytes_done_;
   std::atomic<std::size_t> room_;
   SummaryData data_;
   std::size_t blocks_ = 0;
-  std::vector<FrameRange> pieces_;             // each within one block
-  std::vector<std::vector<float>> retained_;   // [pieces]; V of the first pass, or empty
+  std::vector<FrameRange> pieces_;            // each within one block
+  std::vector<std::vector<float>> retained_;  // [pieces]; V of the first pass, or empty
 };
 
 }  // namespace
 
-Expected<index::SummaryData> summarize_view(const archive::FrameReader& reader, const optics::Grid& grid,
-                                            const optics::Aperture& aperture, const SummarizeOptions& options,
-                                            WorkPool& pool, const std::stop_token& stop,
-                                            std::atomic<std::uint64_t>& bytes_read) {
+Expected<index::SummaryData> summarize_view(const archive::FrameReader& reader,
+                                            const optics::Grid& grid,
+                                            const optics::Aperture& aperture,
+                                            const FileSystem& files,
+                                            const std::filesystem::path& folder,
+                                            const SummarizeOptions& options,
+                                            WorkPool& pool,
+                                            const std::stop_token& stop,
+                                            std::atomic<std::uint64_t>& bytes_done) {
   const auto basis = summary_basis(aperture);
   if (!basis) return failure(basis);
-  return Summarizer(reader, grid, aperture, *basis, options, pool, stop, bytes_read).run();
+  return Summarizer(reader, grid, aperture, *basis, options, pool, stop, bytes_done).run(files, folder);
 }
 
 }  // namespace bentlight::ingest

@@ -54,6 +54,9 @@ class FullDisk final : public FileSystem {
   Expected<void> create(const fs::path& path, std::span<const std::byte> bytes) const override {
     return replace(path, bytes);
   }
+  Expected<std::unique_ptr<NewFile>> start(const fs::path& path) const override {
+    return failure(replace(path, {}));
+  }
   Expected<void> publish_folder(const fs::path&, const fs::path& to) const override {
     return replace(to, {});
   }

@@ -44,8 +44,7 @@ class Aperture {
   /// The part of this aperture inside a disc (or annulus); a point belongs when its center does.
   ///
   ///   errors  aperture_outside_mask when the disc reaches beyond the light (judged by the disc's rim against
-  ///   the
-  ///           view's own outline, with one grid step of grace), degenerate_aperture
+  ///           the view's own outline, with one grid step of grace), degenerate_aperture
   Expected<Aperture> cut(const ApertureCut& cut) const;
 
   std::size_t points() const { return x_m_.size(); }

@@ -44,23 +44,27 @@ std::vector<double> lagged_sums_direct(std::span<const double> x, std::size_t la
 std::vector<double> lagged_sums_by_fft(std::span<const double> x, std::size_t lags) {
   const std::size_t piece = std::bit_ceil(lags + 1);
   const RealFft fft(2 * piece);
-  std::vector<double> early(fft.length(), 0.0), both(fft.length());
-  std::vector<std::complex<double>> early_spectrum(fft.bins()), both_spectrum(fft.bins()), sum(fft.bins());
+  std::vector<double> padded(fft.length());
+  std::vector<std::complex<double>> here(fft.bins()), next(fft.bins()), sum(fft.bins());
+  const auto transform = [&](std::size_t first, std::vector<std::complex<double>>& spectrum) {
+    std::ranges::fill(padded, 0.0);
+    if (first < x.size())
+      std::ranges::copy(x.subspan(first, std::min(piece, x.size() - first)), padded.begin());
+    fft.forward(padded, spectrum);
+  };
+  transform(0, here);
   for (std::size_t first = 0; first < x.size(); first += piece) {
-    const auto here = x.subspan(first, std::min(piece, x.size() - first));
-    const auto reach = x.subspan(first, std::min(2 * piece, x.size() - first));
-    std::ranges::fill(early, 0.0);
-    std::ranges::fill(both, 0.0);
-    std::ranges::copy(here, early.begin());
-    std::ranges::copy(reach, both.begin());
-    fft.forward(early, early_spectrum);
-    fft.forward(both, both_spectrum);
-    for (std::size_t k = 0; k < sum.size(); ++k) sum[k] += std::conj(early_spectrum[k]) * both_spectrum[k];
+    transform(first + piece, next);
+    // The next piece stands half the transform's length further on, which turns the sign of every other bin.
+    for (std::size_t k = 0; k < sum.size(); ++k) {
+      sum[k] += std::conj(here[k]) * (k % 2 == 0 ? here[k] + next[k] : here[k] - next[k]);
+    }
+    here.swap(next);
   }
-  fft.inverse(sum, both);
-  both.resize(lags + 1);
-  for (double& value : both) value /= static_cast<double>(fft.length());
-  return both;
+  fft.inverse(sum, padded);
+  padded.resize(lags + 1);
+  for (double& value : padded) value /= static_cast<double>(fft.length());
+  return padded;
 }
 
 std::vector<double> lagged_sums(std::span<const double> x, std::size_t lags) {

@@ -60,22 +60,26 @@ struct MeanError {
 };
 
 /// Batches to cut `count` values into that are worth `effective` independent ones: about a square root of
-/// them, each worth eight at least.
+/// them, each worth sixteen at least. (Of eight, they held the mean of an autoregressive series in 93.9 % of
+/// trials, of sixteen in 94.4, where 95 are wanted: tests/optics/series_confidence_test.cpp.)
 std::size_t batches_for(std::size_t count, double effective) {
-  const double wanted = std::min(std::sqrt(static_cast<double>(count)), effective / 8);
+  const double wanted = std::min(std::sqrt(static_cast<double>(count)), effective / 16);
   return std::clamp<std::size_t>(static_cast<std::size_t>(wanted), 2, count);
 }
 
-/// Means of neighbouring batches of value(0) … value(count - 1), equally long but for one value.
-template <class Value>
-std::vector<double> batch_means(std::size_t count, std::size_t batches, Value value) {
-  std::vector<double> means(batches, 0.0);
+/// Means of neighbouring batches of values, equally long but for one value; `sum` gives the sum over a batch.
+template <class Sum>
+std::vector<double> batch_means(std::span<const double> values, std::size_t batches, Sum sum) {
+  std::vector<double> means(batches);
   for (std::size_t i = 0; i < batches; ++i) {
-    const std::size_t begin = i * count / batches, end = (i + 1) * count / batches;
-    for (std::size_t t = begin; t < end; ++t) means[i] += value(t);
-    means[i] /= static_cast<double>(end - begin);
+    const std::size_t begin = i * values.size() / batches, end = (i + 1) * values.size() / batches;
+    means[i] = sum(values.subspan(begin, end - begin)) / static_cast<double>(end - begin);
   }
   return means;
+}
+
+double sum_of(std::span<const double> values) {
+  return std::accumulate(values.begin(), values.end(), 0.0);
 }
 
 /// Whether neighbouring batch means depend on one another beyond chance (one-sided, five percent).
@@ -83,16 +87,15 @@ bool are_correlated(std::span<const double> means) {
   return autocorrelation(means, 1)[1] > 1.645 / std::sqrt(static_cast<double>(means.size()));
 }
 
-/// Standard error of the mean of value(0) … value(count - 1). Batches that still depend on one another are
-/// joined in pairs: the memory of an indicator is not that of the series, and the estimate of either may fall
-/// short.
-template <class Value>
-MeanError mean_error(std::size_t count, double effective, Value value) {
-  std::size_t batches = batches_for(count, effective);
-  auto means = batch_means(count, batches, value);
+/// Standard error of the mean of what `sum` adds up. Batches that still depend on one another are joined in
+/// pairs: the memory of an indicator is not that of the series, and the estimate of either may fall short.
+template <class Sum>
+MeanError mean_error(std::span<const double> values, double effective, Sum sum) {
+  std::size_t batches = batches_for(values.size(), effective);
+  auto means = batch_means(values, batches, sum);
   while (batches >= 16 && are_correlated(means)) {
     batches /= 2;
-    means = batch_means(count, batches, value);
+    means = batch_means(values, batches, sum);
   }
   const auto number = static_cast<double>(batches);
   return {moments(means).std / std::sqrt(number), number - 1};
@@ -111,6 +114,24 @@ double reverse_arrangements(std::span<const double> means) {
   }
   const auto n = static_cast<double>(means.size());
   return (static_cast<double>(reversed) - n * (n - 1) / 4) / std::sqrt(n * (2 * n + 5) * (n - 1) / 72);
+}
+
+/// The values without the straight line that fits them best: its share of the memory of a drifting series is
+/// the drift that a test for it looks for.
+std::vector<double> without_trend(std::span<const double> values) {
+  const double middle = 0.5 * static_cast<double>(values.size() - 1);
+  const double mean = moments(values).mean;
+  double product = 0.0, square = 0.0;
+  for (std::size_t t = 0; t < values.size(); ++t) {
+    const double place = static_cast<double>(t) - middle;
+    product += place * (values[t] - mean);
+    square += place * place;
+  }
+  std::vector<double> rest(values.begin(), values.end());
+  for (std::size_t t = 0; t < rest.size(); ++t) {
+    rest[t] -= mean + product / square * (static_cast<double>(t) - middle);
+  }
+  return rest;
 }
 
 }  // namespace
@@ -166,8 +187,7 @@ double SeriesConfidence::percentile(double percent) const {
 }
 
 Interval SeriesConfidence::mean_interval(double level) const {
-  const auto spread =
-      mean_error(values_.size(), effective_samples_, [&](std::size_t t) { return values_[t]; });
+  const auto spread = mean_error(values_, effective_samples_, sum_of);
   const double mean = moments(values_).mean;
   const double reach = student_t_quantile(0.5 + level / 2, spread.freedom) * spread.error;
   return {mean - reach, mean + reach, level};
@@ -175,8 +195,9 @@ Interval SeriesConfidence::mean_interval(double level) const {
 
 Interval SeriesConfidence::percentile_interval(double percent, double level) const {
   const double quantile = percentile(percent);
-  const auto spread = mean_error(values_.size(), effective_samples_,
-                                 [&](std::size_t t) { return values_[t] <= quantile ? 1.0 : 0.0; });
+  const auto spread = mean_error(values_, effective_samples_, [&](std::span<const double> batch) {
+    return static_cast<double>(std::ranges::count_if(batch, [&](double value) { return value <= quantile; }));
+  });
   const double reach = 100.0 * student_t_quantile(0.5 + level / 2, spread.freedom) * spread.error;
   return {percentile(std::max(0.0, percent - reach)), percentile(std::min(100.0, percent + reach)), level};
 }
@@ -184,14 +205,14 @@ Interval SeriesConfidence::percentile_interval(double percent, double level) con
 Stationarity SeriesConfidence::stationarity() const {
   Stationarity result;
   if (values_.size() < 8) return result;
-  const auto value = [&](std::size_t t) { return values_[t]; };
-  const auto means = batch_means(values_.size(), batches_for(values_.size(), effective_samples_), value);
-  result.reverse_arrangements_z = reverse_arrangements(means);
+  const auto still = without_trend(values_);
+  const double effective = optics::effective_samples(still);
+  result.reverse_arrangements_z =
+      reverse_arrangements(batch_means(values_, batches_for(values_.size(), effective), sum_of));
 
-  const std::size_t half = values_.size() / 2, rest = values_.size() - half;
-  const auto early = mean_error(half, effective_samples_ / 2, value);
-  const auto late =
-      mean_error(rest, effective_samples_ / 2, [&](std::size_t t) { return values_[half + t]; });
+  const std::size_t half = values_.size() / 2;
+  const auto early = mean_error(std::span(still).first(half), effective / 2, sum_of);
+  const auto late = mean_error(std::span(still).subspan(half), effective / 2, sum_of);
   const double error = std::hypot(early.error, late.error);
   if (error == 0.0) return result;
   // Degrees of freedom after Welch, Biometrika 34 (1947) 28, and Satterthwaite.

@@ -47,6 +47,7 @@ class SeriesConfidence {
   explicit SeriesConfidence(std::span<const double> values);
 
   double effective_samples() const { return effective_samples_; }
+  std::span<const double> ascending() const { return ascending_; }
   double percentile(double percent) const;
 
   Interval mean_interval(double level) const;
@@ -58,7 +59,7 @@ class SeriesConfidence {
   ///   source  Woodruff, J. Am. Stat. Assoc. 47 (1952) 635
   Interval percentile_interval(double percent, double level) const;
 
-  /// Zeros for fewer than eight values.
+  /// Zeros for fewer than eight values. Spread and memory are those of the series less its linear trend.
   ///
   ///   source  Bendat and Piersol, Random Data: reverse arrangements, on batch means
   Stationarity stationarity() const;

@@ -36,35 +36,42 @@ void plane_sums_of(const float* frames, std::size_t points, const float* a, cons
   }
 }
 
+// The compiler is told that no frame is a map (__restrict): without that it takes one value at a time. The
+// plane is evaluated in double: in float, a tilt of a thousand times the rest cost 5e-6 of the rms
+// (frame_preparation_test).
 template <std::size_t Frames, bool HasCenter>
-void subtract_plane_of(float* frames,
+void subtract_plane_of(float* __restrict frames,
                        std::size_t points,
-                       const float* a,
-                       const float* b,
-                       const float* center,
-                       const float* plane,
-                       double* squares) {
+                       const double* __restrict a,
+                       const double* __restrict b,
+                       const float* __restrict center,
+                       const double* __restrict plane,
+                       double* __restrict squares) {
   double total[Frames] = {};
   for (std::size_t tile = 0; tile < points; tile += tile_points) {
     const std::size_t end = std::min(points, tile + tile_points);
-    float sum[Frames] = {};
-    for (std::size_t p = tile; p < end; ++p) {
-      const float base = HasCenter ? center[p] : 0.0F;
-      for (std::size_t f = 0; f < Frames; ++f) {
-        const float* c = plane + f * 3;
-        const float left = frames[f * points + p] - (c[0] + c[1] * a[p] + c[2] * b[p]) - base;
-        frames[f * points + p] = left;
-        sum[f] += left * left;
+    for (std::size_t f = 0; f < Frames; ++f) {
+      float* __restrict frame = frames + f * points;
+      const double c0 = plane[3 * f], c1 = plane[3 * f + 1], c2 = plane[3 * f + 2];
+      float sum = 0.0F;
+      for (std::size_t p = tile; p < end; ++p) {
+        const double rest = static_cast<double>(frame[p]) - (c0 + c1 * a[p] + c2 * b[p]);
+        const float left = static_cast<float>(rest) - (HasCenter ? center[p] : 0.0F);
+        frame[p] = left;
+        sum += left * left;
       }
+      total[f] += static_cast<double>(sum);
     }
-    for (std::size_t f = 0; f < Frames; ++f) total[f] += static_cast<double>(sum[f]);
   }
   std::copy(total, total + Frames, squares);
 }
 
 template <std::size_t Frames>
-void add_about_pilot_of(
-    const float* frames, std::size_t points, const float* pilot, float* sum, float* squares) {
+void add_about_pilot_of(const float* __restrict frames,
+                        std::size_t points,
+                        const float* __restrict pilot,
+                        float* __restrict sum,
+                        float* __restrict squares) {
   for (std::size_t p = 0; p < points; ++p) {
     float s = 0.0F, q = 0.0F;
     for (std::size_t f = 0; f < Frames; ++f) {
@@ -102,10 +109,10 @@ void plane_sums(const float* frames,
 void subtract_plane(float* frames,
                     std::size_t count,
                     std::size_t points,
-                    const float* a,
-                    const float* b,
+                    const double* a,
+                    const double* b,
                     const float* center,
-                    const float* plane,
+                    const double* plane,
                     double* squares) {
   const auto subtract = [&]<std::size_t Frames>(std::size_t f) {
     float* const first = frames + f * points;

@@ -1,5 +1,5 @@
-// The innermost loops over frames. They run in float on values whose piston was shifted away, several frames
-// at a time so that the maps are loaded once for all of them; sums of a few hundred floats go over to double.
+// The innermost loops over frames. They run on floats whose piston was shifted away, several frames at a time
+// so that the maps are loaded once for all of them; sums of a few hundred floats go over to double.
 #pragma once
 
 #include <cstddef>
@@ -23,10 +23,10 @@ void plane_sums(
 void subtract_plane(float* frames,
                     std::size_t count,
                     std::size_t points,
-                    const float* a,
-                    const float* b,
+                    const double* a,
+                    const double* b,
                     const float* center,
-                    const float* plane,
+                    const double* plane,
                     double* squares);
 
 /// In place: frame += lift, one number to all points of a frame. Gives the sum of squares.

@@ -43,6 +43,8 @@ Expected<FramePreparation> FramePreparation::make(const Aperture& aperture,
   preparation.takes_ = {removal.has(1), removal.has(2), removal.has(3)};
   preparation.tip_.assign(basis->mode_float(2).begin(), basis->mode_float(2).end());
   preparation.tilt_.assign(basis->mode_float(3).begin(), basis->mode_float(3).end());
+  preparation.tip_exactly_.assign(basis->mode(2).begin(), basis->mode(2).end());
+  preparation.tilt_exactly_.assign(basis->mode(3).begin(), basis->mode(3).end());
   const auto higher = std::ranges::upper_bound(removal.modes, std::size_t{3});
   preparation.higher_.resize(static_cast<Eigen::Index>(aperture.points()), removal.modes.end() - higher);
   for (auto mode = higher; mode != removal.modes.end(); ++mode) {
@@ -81,26 +83,23 @@ void FramePreparation::remove_plane(FrameBlock& block, Scratch& scratch) const {
   const float* const center = center_.empty() ? nullptr : center_.data();
   // A kept piston comes back only after the higher modes are out, which it would disturb.
   const bool lifts_here = !takes_[0] && higher_.cols() == 0;
-  scratch.sums.resize(3 * frames_at_once);
-  scratch.plane.resize(3 * frames_at_once);
+  std::array<double, 3 * frames_at_once> plane = {};
   for (std::size_t first = 0; first < block.frames.count; first += frames_at_once) {
     // Group by group, so that the second touch finds the frames in cache.
     const std::size_t count = std::min(frames_at_once, block.frames.count - first);
     float* const frames = block.frame(first).data();
-    plane_sums(frames, count, block.points, tip_.data(), tilt_.data(), scratch.sums.data());
+    plane_sums(frames, count, block.points, tip_.data(), tilt_.data(), plane.data());
     for (std::size_t f = 0; f < count; ++f) {
-      for (std::size_t k = 0; k < 3; ++k) {
-        scratch.plane[3 * f + k] = takes_[k] ? static_cast<float>(scratch.sums[3 * f + k] * scale) : 0.0F;
-      }
-      if (lifts_here) scratch.plane[3 * f] = static_cast<float>(center_piston_m_ - block.shift_m[first + f]);
+      for (std::size_t k = 0; k < 3; ++k) plane[3 * f + k] *= takes_[k] ? scale : 0.0;
+      if (lifts_here) plane[3 * f] = center_piston_m_ - block.shift_m[first + f];
     }
-    subtract_plane(frames, count, block.points, tip_.data(), tilt_.data(), center, scratch.plane.data(),
-                   scratch.mean_square.data() + first);
+    subtract_plane(frames, count, block.points, tip_exactly_.data(), tilt_exactly_.data(), center,
+                   plane.data(), scratch.mean_square.data() + first);
   }
 }
 
 void FramePreparation::remove_higher_modes(FrameBlock& block, Scratch& scratch) const {
-  scratch.plane.resize(std::max<std::size_t>(product_frames, 3 * frames_at_once));
+  scratch.lift.resize(product_frames);
   for (std::size_t first = 0; first < block.frames.count; first += product_frames) {
     const std::size_t count = std::min(product_frames, block.frames.count - first);
     Eigen::Map<Eigen::MatrixXf> frames(block.frame(first).data(), higher_.rows(),
@@ -109,9 +108,9 @@ void FramePreparation::remove_higher_modes(FrameBlock& block, Scratch& scratch) 
     scratch.coefficients /= static_cast<float>(block.points);
     frames.noalias() -= higher_ * scratch.coefficients;
     for (std::size_t f = 0; f < count; ++f) {
-      scratch.plane[f] = takes_[0] ? 0.0F : static_cast<float>(block.shift_m[first + f] - center_piston_m_);
+      scratch.lift[f] = takes_[0] ? 0.0F : static_cast<float>(block.shift_m[first + f] - center_piston_m_);
     }
-    lift(frames.data(), count, block.points, scratch.plane.data(), scratch.mean_square.data() + first);
+    lift(frames.data(), count, block.points, scratch.lift.data(), scratch.mean_square.data() + first);
   }
 }
 

@@ -28,8 +28,7 @@ class FramePreparation {
  public:
   struct Scratch {
     std::vector<double> mean_square;  // [frames], m2, of the prepared block; NaN where not finite
-    std::vector<double> sums;
-    std::vector<float> plane;
+    std::vector<float> lift;
     Eigen::MatrixXf coefficients;
   };
 
@@ -52,11 +51,12 @@ class FramePreparation {
   void remove_plane(FrameBlock& block, Scratch& scratch) const;
   void remove_higher_modes(FrameBlock& block, Scratch& scratch) const;
 
-  std::array<bool, 3> takes_ = {};  // piston, tip, tilt
-  std::vector<float> tip_, tilt_;   // [points]
-  Eigen::MatrixXf higher_;          // [points, removed modes beyond tilt]
-  std::vector<float> center_;       // [points] or empty; without piston
-  double center_piston_m_ = 0.0;    // zero where piston is removed
+  std::array<bool, 3> takes_ = {};                  // piston, tip, tilt
+  std::vector<float> tip_, tilt_;                   // [points], for sums
+  std::vector<double> tip_exactly_, tilt_exactly_;  // [points], to subtract
+  Eigen::MatrixXf higher_;                          // [points, removed modes beyond tilt]
+  std::vector<float> center_;                       // [points] or empty; without piston
+  double center_piston_m_ = 0.0;                    // zero where piston is removed
 };
 
 /// Mean over points of each frame times each of the first `modes` modes of `basis`: [modes][frames], in

@@ -45,10 +45,10 @@ double round_step(double width) {
   return 10.0 * power;
 }
 
-std::vector<double> round_edges(std::span<const double> values, double low, double high) {
-  const std::vector<double> ascending = sorted(values);
+std::vector<double> round_edges(std::span<const double> ascending) {
+  const double low = ascending.front(), high = ascending.back();
   const double quartiles = percentile_of_sorted(ascending, 75) - percentile_of_sorted(ascending, 25);
-  const double wanted = 2 * quartiles / std::cbrt(static_cast<double>(values.size()));
+  const double wanted = 2 * quartiles / std::cbrt(static_cast<double>(ascending.size()));
   // Rounding up at most doubles the width, so that 16 to 126 whole bins remain, and one more at either end.
   const double step = round_step(std::clamp(wanted, (high - low) / 126, (high - low) / 32));
   const double first = std::floor(low / step);
@@ -121,26 +121,27 @@ std::vector<double> percentiles(std::span<const double> values, std::span<const 
 }
 
 Histogram histogram(std::span<const double> values, std::size_t bins) {
-  if (values.empty()) throw std::invalid_argument("histogram: no values");
-  auto [low, high] = std::ranges::minmax(values);
+  return histogram_of_sorted(sorted(values), bins);
+}
+
+Histogram histogram_of_sorted(std::span<const double> ascending, std::size_t bins) {
+  if (ascending.empty()) throw std::invalid_argument("histogram: no values");
+  const double low = ascending.front(), high = ascending.back();
   Histogram histogram;
   if (low == high) {
     // All alike: bins about the value, a tenth of it wide in all.
     const double reach = low != 0.0 ? 0.05 * std::abs(low) : 0.5;
     histogram.edges = equal_edges(low - reach, high + reach, bins == 0 ? 16 : bins);
   } else {
-    histogram.edges = bins == 0 ? round_edges(values, low, high) : equal_edges(low, high, bins);
+    histogram.edges = bins == 0 ? round_edges(ascending) : equal_edges(low, high, bins);
   }
-  const std::vector<double>& edges = histogram.edges;
-  const std::size_t last_bin = edges.size() - 2;
-  histogram.counts.assign(last_bin + 1, 0.0);
-  const double per_bin = static_cast<double>(last_bin + 1) / (edges.back() - edges.front());
-  for (const double value : values) {
-    auto bin = std::min(last_bin, static_cast<std::size_t>((value - edges.front()) * per_bin));
-    // The product may land one bin off at an edge; the edges decide.
-    if (value < edges[bin]) --bin;
-    if (bin < last_bin && value >= edges[bin + 1]) ++bin;
-    histogram.counts[bin] += 1.0;
+  auto begin = ascending.begin();
+  for (std::size_t bin = 0; bin + 1 < histogram.edges.size(); ++bin) {
+    const bool is_last = bin + 2 == histogram.edges.size();
+    const auto end =
+        is_last ? ascending.end() : std::lower_bound(begin, ascending.end(), histogram.edges[bin + 1]);
+    histogram.counts.push_back(static_cast<double>(end - begin));
+    begin = end;
   }
   return histogram;
 }
@@ -179,11 +180,13 @@ double distance_from_normal(std::span<const double> ascending, double mean, doub
 }  // namespace
 
 std::optional<LogNormalFit> log_normal_fit(std::span<const double> values) {
-  if (values.size() < 2 || std::ranges::any_of(values, [](double value) { return !(value > 0.0); })) {
+  return log_normal_fit_of_sorted(sorted(values));
+}
+
+std::optional<LogNormalFit> log_normal_fit_of_sorted(std::span<const double> ascending) {
+  if (ascending.size() < 2 || ascending.front() <= 0.0 || ascending.front() == ascending.back())
     return std::nullopt;
-  }
-  std::vector<double> logarithms = sorted(values);
-  if (logarithms.front() == logarithms.back()) return std::nullopt;
+  std::vector<double> logarithms(ascending.begin(), ascending.end());
   for (double& value : logarithms) value = std::log(value);
   const Moments of_logarithm = moments(logarithms);
   if (of_logarithm.std == 0.0) return std::nullopt;

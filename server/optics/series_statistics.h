@@ -30,7 +30,7 @@ std::vector<double> sorted(std::span<const double> values);
 ///   source  Hyndman and Fan, The American Statistician 50 (1996) 361, type 7
 std::vector<double> percentiles(std::span<const double> values, std::span<const double> percents);
 
-/// The same of values that `sorted` gave.
+/// The same of values in ascending order.
 double percentile_of_sorted(std::span<const double> ascending, double percent);
 
 struct Histogram {
@@ -45,6 +45,7 @@ struct Histogram {
 ///   needs   at least one value, all finite
 ///   source  Freedman and Diaconis, Z. Wahrscheinlichkeitstheorie 57 (1981) 453
 Histogram histogram(std::span<const double> values, std::size_t bins);
+Histogram histogram_of_sorted(std::span<const double> ascending, std::size_t bins);
 
 struct LogNormalFit {
   double mu = 0.0, sigma = 0.0;  // mean and standard deviation (divisor count - 1) of the logarithm
@@ -53,6 +54,7 @@ struct LogNormalFit {
 
 /// Nothing when a value is not positive or all are alike.
 std::optional<LogNormalFit> log_normal_fit(std::span<const double> values);
+std::optional<LogNormalFit> log_normal_fit_of_sorted(std::span<const double> ascending);
 
 /// What the fit puts between each pair of edges, out of `count` values.
 std::vector<double> expected_counts(const LogNormalFit& fit,

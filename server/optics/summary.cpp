@@ -79,7 +79,7 @@ void BlockSummarizer::summarize_group(FrameBlock& block, FrameRange group, Block
       const auto product =
           static_cast<double>(products_(static_cast<Eigen::Index>(k), static_cast<Eigen::Index>(f)));
       // What rounding left of the plane belongs to it; piston holds the shift.
-      const double plane = k < plane_modes ? static_cast<double>(plane_[plane_modes * f + k]) : 0.0;
+      const double plane = k < plane_modes ? plane_[plane_modes * f + k] : 0.0;
       summary.coefficients[k * frames + frame] =
           product * scale + plane + (k == 0 ? block.shift_m[frame] : 0.0);
     }
@@ -88,8 +88,6 @@ void BlockSummarizer::summarize_group(FrameBlock& block, FrameRange group, Block
 
 void BlockSummarizer::remove_plane(FrameBlock& block, FrameRange group, BlockSummary& summary) {
   const double scale = 1.0 / static_cast<double>(block.points);
-  const float* const tip = basis_.mode_float(2).data();
-  const float* const tilt = basis_.mode_float(3).data();
   plane_.resize(plane_modes * ModalResidual::most_frames);
   for (std::size_t f = 0; f < group.count; f += frames_at_once) {
     // A few frames at a time, so that the second touch finds them in cache.
@@ -97,12 +95,13 @@ void BlockSummarizer::remove_plane(FrameBlock& block, FrameRange group, BlockSum
     for (std::size_t i = first; i < first + count; ++i) {
       if (!block.finite[i]) std::ranges::fill(block.frame(i), 0.0F);
     }
-    std::array<double, plane_modes* frames_at_once> sums = {};
-    float* const plane = plane_.data() + plane_modes * f;
-    plane_sums(block.frame(first).data(), count, block.points, tip, tilt, sums.data());
-    for (std::size_t i = 0; i < plane_modes * count; ++i) plane[i] = static_cast<float>(sums[i] * scale);
+    float* const frames = block.frame(first).data();
+    double* const plane = plane_.data() + plane_modes * f;
     double* const squares = summary.tilt_removed.data() + first;
-    subtract_plane(block.frame(first).data(), count, block.points, tip, tilt, nullptr, plane, squares);
+    plane_sums(frames, count, block.points, basis_.mode_float(2).data(), basis_.mode_float(3).data(), plane);
+    for (std::size_t i = 0; i < plane_modes * count; ++i) plane[i] *= scale;
+    subtract_plane(frames, count, block.points, basis_.mode(2).data(), basis_.mode(3).data(), nullptr, plane,
+                   squares);
     for (std::size_t i = 0; i < count; ++i) squares[i] *= scale;
   }
 }

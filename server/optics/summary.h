@@ -81,7 +81,7 @@ class BlockSummarizer {
   const ModeBasis& basis_;
   MomentAccumulator moments_;
   ModalResidual modal_residual_;
-  std::vector<float> plane_;      // [group][3]
+  std::vector<double> plane_;     // [group][3]
   Eigen::MatrixXf products_;      // [modes, group]
   Eigen::MatrixXd coefficients_;  // [modes beyond tilt, group]
 };
